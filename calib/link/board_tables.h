@@ -21,7 +21,8 @@ struct Codes {
 /// Image positions on the board are fixed point: 1/8 pixel.
 inline constexpr int kSubpixel = 8;
 
-struct BoardTables;  // the layouts themselves: board_tables.cc's business, see its header part below
+struct BoardTables;  // the layouts themselves: board_tables.cc's business, see its header part
+                     // below
 
 /// Integer-only, exactly as the emitted C does it: no square root, no division, no float.
 /// Positions are in 1/kSubpixel px. `object` is the venue's object index.

@@ -12,9 +12,9 @@ namespace rondel::vision {
 
 /// One connected patch of one object's colour.
 struct Blob {
-  int object = 0;          ///< index into the venue's objects
-  ImagePoint centroid;     ///< sub-pixel
-  ImagePoint measured;     ///< what stands for the object: centroid of a ball, foot of a box, ...
+  int object = 0;       ///< index into the venue's objects
+  ImagePoint centroid;  ///< sub-pixel
+  ImagePoint measured;  ///< what stands for the object: centroid of a ball, foot of a box, ...
   int area_px = 0;
   cv::Rect box;
   bool cut_by_mask = false;  ///< touches the mask's edge, so its centroid is biased
@@ -23,10 +23,10 @@ struct Blob {
 /// What a detector needs, fixed for a whole batch. Immutable; use from many threads.
 struct DetectorSetup {
   colour::ClassTable table;
-  cv::Mat mask;                      ///< CV_8U, 255 may show floor; same size as the frames
-  std::vector<ObjectSpec> objects;   ///< class k is objects[k - 1]
-  ImagePoint centre;                 ///< for 'inner edge along its bearing'
-  const FloorMap* map = nullptr;     ///< for the size gate; none: only the least area counts
+  cv::Mat mask;                     ///< CV_8U, 255 may show floor; same size as the frames
+  std::vector<ObjectSpec> objects;  ///< class k is objects[k - 1]
+  ImagePoint centre;                ///< for 'inner edge along its bearing'
+  const FloorMap* map = nullptr;    ///< for the size gate; none: only the least area counts
   int least_area_px = 6;
 };
 

@@ -19,11 +19,13 @@ struct Section {
 /// HTML for plain text, escaped.
 [[nodiscard]] std::string text(std::string_view plain);
 /// A figure with the picture embedded (PNG), alternative text and caption (both plain text).
-[[nodiscard]] std::string picture(const cv::Mat& image, std::string_view alt,
+[[nodiscard]] std::string picture(const cv::Mat& image,
+                                  std::string_view alt,
                                   std::string_view caption);
 /// A figure with a Chart.js chart; `config` is its plain JSON configuration (no functions). Colours
 /// named "series-1".."series-6", "band", "limit", "good", "bad" in it follow the page's scheme.
-[[nodiscard]] std::string chart(const nlohmann::ordered_json& config, std::string_view alt,
+[[nodiscard]] std::string chart(const nlohmann::ordered_json& config,
+                                std::string_view alt,
                                 std::string_view caption);
 /// A table; cells are plain text, the first row is the head; numbers are right-aligned.
 [[nodiscard]] std::string table(const std::vector<std::vector<std::string>>& rows,

@@ -12,8 +12,8 @@ namespace rondel::app {
 /// What a step (or command) has to say: one JSON document for programs, a few lines for people.
 struct Outcome {
   nlohmann::ordered_json document;
-  std::string summary;   ///< a few lines, each number with its unit
-  int status = 0;        ///< 0, or 1 for a verdict 'not accepted'
+  std::string summary;  ///< a few lines, each number with its unit
+  int status = 0;       ///< 0, or 1 for a verdict 'not accepted'
 };
 
 // The steps of a venue, each in its own file. A step reads the workspace, writes its files under

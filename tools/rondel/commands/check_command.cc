@@ -1,0 +1,10 @@
+#include "calib/base/problem.h"
+#include "tools/rondel/commands/command.h"
+
+namespace rondel::app {
+
+Outcome check_command(const Arguments& arguments, Progress& progress) {
+  return check_step(open_workspace(arguments.words.at(0)), progress);
+}
+
+}  // namespace rondel::app
