@@ -2,7 +2,10 @@
 
 #include <nlohmann/json.hpp>
 #include <opencv2/core.hpp>
+#include <optional>
 #include <string>
+#include <string_view>
+#include <vector>
 
 #include "tools/rondel/workspace.h"
 
@@ -18,12 +21,22 @@ struct Section {
 
 /// HTML for plain text, escaped.
 [[nodiscard]] std::string text(std::string_view plain);
+/// A paragraph of plain text.
+[[nodiscard]] std::string paragraph(std::string_view plain);
 /// A figure with the picture embedded (PNG), alternative text and caption (both plain text).
 [[nodiscard]] std::string picture(const cv::Mat& image,
                                   std::string_view alt,
                                   std::string_view caption);
+/// A figure with an inline SVG drawing. Give it a viewBox and no size; it may use the page's
+/// classes (rule, faint, ink, good, bad, series-1 .. series-6, limit; fill-... of the same names;
+/// label).
+[[nodiscard]] std::string drawing(std::string_view svg,
+                                  std::string_view alt,
+                                  std::string_view caption);
 /// A figure with a Chart.js chart; `config` is its plain JSON configuration (no functions). Colours
-/// named "series-1".."series-6", "band", "limit", "good", "bad" in it follow the page's scheme.
+/// named "series-1".."series-6", "band", "limit", "good", "bad", "ink", "faint" in it follow the
+/// page's scheme. Where the axes must keep their proportion, set options.aspectRatio; otherwise the
+/// page chooses the height.
 [[nodiscard]] std::string chart(const nlohmann::ordered_json& config,
                                 std::string_view alt,
                                 std::string_view caption);
