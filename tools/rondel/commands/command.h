@@ -61,5 +61,6 @@ Outcome where_command(const Arguments& arguments, Progress& progress);
 Outcome locate_command(const Arguments& arguments, Progress& progress);
 Outcome compare_command(const Arguments& arguments, Progress& progress);
 Outcome scene_command(const Arguments& arguments, Progress& progress);
+Outcome completion_command(const Arguments& arguments, Progress& progress);
 
 }  // namespace rondel::app
