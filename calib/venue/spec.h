@@ -20,16 +20,21 @@ struct Uncertain {
 
 // ---- rig.yaml --------------------------------------------------------------------------------
 
+/// Which byte of a pixel comes first in a raw RGB565 dump.
+enum class ByteOrder { high_first, low_first };
+
 struct CameraSpec {
   int width_px = 0;
   int height_px = 0;
   std::optional<Uncertain> focal_px;
+  ByteOrder rgb565_order = ByteOrder::high_first;  ///< `rgb565_order`, of *.565 and *.rgb565 files
 };
 
 /// sag(s) = c s^2 / (1 + sqrt(1 - (1+K) c^2 s^2)), c = 1 / vertex_radius_m, K = conic_constant.
 struct ConicSpec {
   Uncertain vertex_radius_m;
   Uncertain conic_constant;
+  double correlation = 0.0;  ///< of the two, where another form of the drawing leaves one
 };
 
 /// sag(s) = s tan(slope_rad).
@@ -40,7 +45,7 @@ struct ConeSpec {
 /// Measured points (distance from the axis, sag), both m, with the standard deviation of a sag.
 struct ProfileSpec {
   std::vector<std::pair<double, double>> points_m;
-  double sag_sd_m = 0.0;
+  double sag_sd_m = 0.0;  ///< 0: taken from the points' own scatter
 };
 
 struct MirrorSpec {
@@ -134,6 +139,8 @@ enum class HsvScale { opencv, full_byte, degrees_percent };
 struct VenueSpec {
   std::string name;
   std::vector<ObjectSpec> objects;  ///< in the file's order; the board's object index follows it
+  /// `lights`, by hand and for people: a light's name and what it is. Frames decide which exist.
+  std::vector<std::pair<std::string, std::string>> lights;
   LinkSpec link;
   BudgetSpec budget;
   ToleranceSpec tolerance;
