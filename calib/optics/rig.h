@@ -20,7 +20,8 @@ namespace rondel::optics {
 /// stands eye_height above it. The floor's own axes come from the image's by the smallest rotation
 /// that makes the normal +z.
 ///
-/// Robot frame: origin on the floor straight below (along the floor's normal) the mirror's vertex.
+/// Robot frame: origin on the floor straight below (along the floor's normal) the pinhole, through
+/// which the mirror's axis runs where nothing is off.
 /// bearing = heading + azimuth where `mirrored`, heading - azimuth where not, azimuth =
 /// atan2(y, x) in the floor's axes.
 template <class T>

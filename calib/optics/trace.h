@@ -79,7 +79,7 @@ template <class T>
   const T sink = dot(up, sight->along);
   const T drop = height_m - rig.eye_height_m - dot(up, sight->from_m);
   if (!(value_of(sink) * value_of(drop) > 0.0)) return std::nullopt;
-  const Vec3<T> place = sight->from_m + (drop / sink) * sight->along - rig.vertex_m();
+  const Vec3<T> place = sight->from_m + (drop / sink) * sight->along;
   const Vec3<T> on_floor = turn_onto_z(up, place);
   return robot_from_floor_axes(rig, on_floor.x, on_floor.y);
 }
@@ -126,9 +126,7 @@ template <class T>
   Aim<T> aim;
   aim.up = rig.floor_up();
   const Floor<T> axes = floor_axes_from_robot(rig, x_m, y_m);
-  const Vec3<T> vertex_floor = turn_onto_z(aim.up, rig.vertex_m());
-  const Vec3<T> target_floor{
-      axes.x_m + vertex_floor.x, axes.y_m + vertex_floor.y, height_m - rig.eye_height_m};
+  const Vec3<T> target_floor{axes.x_m, axes.y_m, height_m - rig.eye_height_m};
   aim.target = turn_from_z(aim.up, target_floor);
   aim.out = turn_from_z(aim.up, Vec3<T>{T(out_x), T(out_y), T(0.0)});
   aim.side = turn_from_z(aim.up, Vec3<T>{T(-out_y), T(out_x), T(0.0)});

@@ -59,6 +59,11 @@ TEST(Trace, FloorToPixelAndBackCloses) {
           const double y = range_m * std::sin(bearing);
           const auto pixel = floor_to_pixel(rig, x, y, height_m);
           if (!pixel) continue;
+          // A tilted cone's apex has no place in the picture that its axial trace could start from.
+          if (rig.mirror.kind == MirrorKind::cone &&
+              std::hypot(pixel->u_px - rig.cu_px, pixel->v_px - rig.cv_px) < 20.0) {
+            continue;
+          }
           ++seen;
           const auto floor = pixel_to_floor(rig, pixel->u_px, pixel->v_px, height_m);
           ASSERT_TRUE(floor) << "seed " << seed << " range " << range_m;
@@ -141,8 +146,7 @@ TEST(Trace, AgreesWithFermatsPrinciple) {
     const double bearing = 2.4 * i;
     const double x = range_m * std::cos(bearing);
     const double y = range_m * std::sin(bearing);
-    const Vec3<double> target{
-        x + rig.shift_x_m, y + rig.shift_y_m, 0.037 * (i % 3) - rig.eye_height_m};
+    const Vec3<double> target{x, y, 0.037 * (i % 3) - rig.eye_height_m};
     const ImagePoint truth = fermat_pixel(rig, target);
     const auto pixel = floor_to_pixel(rig, x, y, 0.037 * (i % 3));
     ASSERT_TRUE(pixel);
@@ -170,10 +174,9 @@ TEST(Trace, ChassisTiltIsARotationOfTheWholeRobot) {
   };
   const Vec3<double> from = turn(sight->from_m);
   const Vec3<double> along = turn(sight->along);
-  const Vec3<double> vertex = turn({0.0, 0.0, 0.060});
   const double t = (-0.160 - from.z) / along.z;
-  EXPECT_NEAR(floor->x_m, from.x + t * along.x - vertex.x, 1e-14);
-  EXPECT_NEAR(floor->y_m, from.y + t * along.y - vertex.y, 1e-14);
+  EXPECT_NEAR(floor->x_m, from.x + t * along.x, 1e-14);
+  EXPECT_NEAR(floor->y_m, from.y + t * along.y, 1e-14);
 }
 
 TEST(Trace, BearingFollowsTheImageOrTurnsAgainstIt) {
