@@ -27,9 +27,9 @@ enum class PixelClass : unsigned char {
 struct ObjectTruth {
   std::size_t object = 0;  ///< index into Scene::objects
   std::string name;
-  FloorSpot spot;         ///< of what is measured: a ball's or post's centre, a box's near foot
-  FloorSpot middle;       ///< of its centre
-  double height_m = 0.0;  ///< above the floor of what is measured: a ball's radius, else 0
+  FloorSpot spot;                ///< of what is measured: a ball's centre, else the near foot
+  FloorSpot middle;              ///< of its centre
+  double height_m = 0.0;         ///< above the floor of what is measured: a ball's radius, else 0
   std::optional<ImagePoint> at;  ///< where `spot` at that height appears; none outside the rim
   double area_px = 0.0;          ///< visible, counted in fractions of pixels; 0: hidden
   double hidden_fraction = 0.0;  ///< of its area inside the rim, hidden behind body or things

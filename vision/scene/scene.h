@@ -53,9 +53,10 @@ struct Floor {
   std::vector<Lane> lanes;
 };
 
-/// An upright board.
+/// An upright board; lifted off the floor it is a poster, a door's window, a table's top.
 struct Wall {
   FloorPoint from, to;
+  double lift_m = 0.0;
   double height_m = 0.12;
   double thickness_m = 0.018;
   Material material{{0.55, 0.55, 0.53}, 0.1};
@@ -111,6 +112,16 @@ struct Post {
   double radius_m = 0.003;
 };
 
+/// A block standing on the plate.
+struct RobotPart {
+  FloorPoint at;
+  double turn_rad = 0.0;
+  double length_m = 0.02;
+  double width_m = 0.02;
+  double height_m = 0.01;
+  Material material;
+};
+
 struct Robot {
   double plate_radius_m = 0.085;
   double plate_below_eye_m = 0.045;
@@ -119,6 +130,7 @@ struct Robot {
   std::vector<Post> posts{{1.0471975511965976, 0.040, 0.003},
                           {3.1415926535897931, 0.040, 0.003},
                           {-1.0471975511965976, 0.040, 0.003}};
+  std::vector<RobotPart> parts;
   double holder_radius_m = 0.0345;  ///< the ring that holds the mirror; 0: none
   double camera_radius_m = 0.008;   ///< lens barrel
   double camera_board_m = 0.026;    ///< edge of the square board under it
@@ -135,6 +147,7 @@ struct Sensor {
   int supersample = 3;          ///< rays a side and pixel
   double vignetting = 0.25;     ///< loss of light at the image's corner, 0..1
   double defocus_px = 0.55;     ///< standard deviation of the blur
+  double glare = 0.02;          ///< share of the light that the lens scatters widely
   double full_well_e = 9000.0;  ///< electrons at full scale; 0: no noise at all
   double read_noise_e = 9.0;
   bool bayer = true;     ///< mosaic (RGGB) and demosaicing
