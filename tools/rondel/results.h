@@ -21,6 +21,19 @@ using MadeFrom = std::vector<std::pair<std::string, std::string>>;
 /// Appends a `made_from:` map to a result's YAML text; every results/*.yaml ends with it.
 [[nodiscard]] std::string with_made_from(std::string yaml, const MadeFrom& made_from);
 
+/// The record that a result carries: from the end of a YAML file, or from "made_from" in a JSON
+/// file (check.json). Empty where there is none.
+[[nodiscard]] MadeFrom made_from_of(const std::filesystem::path& result);
+
+/// A YAML result without its record: what later steps are made from.
+[[nodiscard]] std::string_view without_made_from(std::string_view yaml);
+
+/// The steps in the order in which `rondel run` takes them.
+[[nodiscard]] const std::vector<std::string>& step_names();
+
+/// The file under results/ that carries the step's record.
+[[nodiscard]] std::filesystem::path result_of(const Workspace& workspace, std::string_view step);
+
 enum class Freshness { missing, stale, fresh };
 struct StepState {
   Freshness freshness = Freshness::missing;
