@@ -57,21 +57,16 @@ double power_mean(const Eigen::VectorXd& variance, int doublings) {
   return std::sqrt(largest * std::pow(power.mean(), std::ldexp(1.0, -doublings)));
 }
 
+/// Doublings of the power that the measure takes; the worst case has no power of its own.
+int doublings_of(Measure measure) {
+  if (measure == Measure::power4) return 2;
+  return measure == Measure::power16 ? 4 : 6;
+}
+
 double value_of(const Eigen::VectorXd& variance, Measure measure) {
-  switch (measure) {
-    case Measure::mean:
-      return std::sqrt(std::max(0.0, variance.mean()));
-    case Measure::power4:
-      return power_mean(variance, 2);
-    case Measure::power16:
-      return power_mean(variance, 4);
-    case Measure::power64:
-      return power_mean(variance, 6);
-    case Measure::worst:
-    case Measure::determinant:
-      break;
-  }
-  return std::sqrt(std::max(0.0, variance.maxCoeff()));
+  if (measure == Measure::mean) return std::sqrt(std::max(0.0, variance.mean()));
+  if (measure == Measure::worst) return std::sqrt(std::max(0.0, variance.maxCoeff()));
+  return power_mean(variance, doublings_of(measure));
 }
 
 double determinant_value(double log_determinant, Eigen::Index parameters) {
