@@ -3,6 +3,8 @@
 #include <algorithm>
 #include <cmath>
 
+#include "vision/scene/scene.h"
+
 namespace rondel::scene {
 namespace {
 
@@ -59,6 +61,12 @@ double srgb_from_linear(double linear) {
 
 double linear_from_srgb(double coded) {
   return coded <= 0.04045 ? coded / 12.92 : std::pow((coded + 0.055) / 1.055, 2.4);
+}
+
+Vec3 srgb(int red, int green, int blue) {
+  return {linear_from_srgb(red / 255.0),
+          linear_from_srgb(green / 255.0),
+          linear_from_srgb(blue / 255.0)};
 }
 
 }  // namespace rondel::scene

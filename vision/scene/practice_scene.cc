@@ -3,7 +3,6 @@
 #include <cmath>
 #include <numbers>
 
-#include "vision/scene/light_colour.h"
 #include "vision/scene/noise.h"
 #include "vision/scene/scene.h"
 
@@ -81,12 +80,6 @@ void furnish(Scene& scene) {
 
 }  // namespace
 
-Vec3 srgb(int red, int green, int blue) {
-  return {linear_from_srgb(red / 255.0),
-          linear_from_srgb(green / 255.0),
-          linear_from_srgb(blue / 255.0)};
-}
-
 Scene practice_scene(const SceneRig& rig, unsigned seed, int frames_per_light) {
   Scene scene;
   scene.name = fmt::format("practice {}", seed);
@@ -125,6 +118,10 @@ Scene practice_scene(const SceneRig& rig, unsigned seed, int frames_per_light) {
   for (const FloorPoint at : {FloorPoint{-0.4, 1.55}, FloorPoint{-0.16, 1.62}}) {
     legs.at = at;
     scene.objects.push_back(legs);
+  }
+
+  for (std::size_t k = 0; k < scene.objects.size(); ++k) {
+    scene.objects[k].id = fmt::format("thing_{}", k + 1);
   }
 
   Light noon;

@@ -6,6 +6,7 @@
 #include <cmath>
 #include <functional>
 #include <numbers>
+#include <opencv2/imgcodecs.hpp>
 #include <thread>
 
 #include "vision/scene/body.h"
@@ -344,6 +345,12 @@ RenderedFrame render(const Scene& scene, std::size_t frame, int threads) {
                         scene.sensor,
                         scene.lights[scene.frames[frame].light],
                         mix(scene.seed ^ mix(frame + 1)));
+  int quality = scene.sensor.jpeg_quality;
+  if (quality == 0 && scene.frames[frame].image.ends_with(".jpg")) quality = 92;
+  if (quality > 0) {
+    cv::imencode(".jpg", rendered.bgr, rendered.jpeg, {cv::IMWRITE_JPEG_QUALITY, quality});
+    rendered.bgr = cv::imdecode(rendered.jpeg, cv::IMREAD_COLOR);
+  }
   return rendered;
 }
 

@@ -58,6 +58,7 @@ struct FrameTruth {
 
 struct RenderedFrame {
   cv::Mat bgr;  ///< CV_8UC3, as the camera delivers it (JPEG and RGB565 losses included)
+  std::vector<unsigned char> jpeg;  ///< the file it delivers, where the sensor makes JPEGs
   FrameTruth truth;
 };
 
@@ -77,7 +78,7 @@ struct RenderedFrame {
 [[nodiscard]] cv::Mat render_linear(const Scene& scene, std::size_t frame, int threads = 1);
 
 /// What the camera makes of that radiance: vignetting, blur, exposure noise, mosaic, white balance,
-/// curve, losses. `noise_seed` picks the noise.
+/// curve, RGB565 (JPEG is render's). `noise_seed` picks the noise.
 [[nodiscard]] cv::Mat expose(const cv::Mat& linear_bgr,
                              const Sensor& sensor,
                              const Light& light,

@@ -2,6 +2,7 @@
 
 #include <cstdint>
 #include <filesystem>
+#include <optional>
 #include <string>
 #include <vector>
 
@@ -25,7 +26,8 @@ enum class Solid { ball, box, cylinder };
 
 /// A thing on the floor. One with a name is an object somebody looks for; its truth is recorded.
 struct SceneObject {
-  std::string name;  ///< empty: scenery
+  std::string id;    ///< its own name among the scene's objects, "buoy_1"
+  std::string name;  ///< what it is, "buoy"; empty: scenery
   Solid solid = Solid::ball;
   FloorPoint at;            ///< its centre
   double turn_rad = 0.0;    ///< box: direction of its length
@@ -178,6 +180,17 @@ struct SceneFrame {
   std::vector<Move> moves;
 };
 
+/// What a person with a tape and a mouse would write down about the frames (survey.h).
+struct Survey {
+  std::uint64_t seed = 1;
+  double mark_px = 0.5;    ///< standard deviation of a click, along u and v
+  double tape_m = 0.003;   ///< standard deviation of a measured place, along x and y
+  int floor_marks = 4;
+  int object_marks = 4;
+  double nearest_m = 0.25;  ///< of marks
+  double farthest_m = 1.4;
+};
+
 /// Everything there is to render: made in code or read from a file.
 struct Scene {
   std::string name = "scene";
@@ -191,6 +204,7 @@ struct Scene {
   std::vector<SceneObject> objects;
   std::vector<Light> lights;
   std::vector<SceneFrame> frames;
+  std::optional<Survey> survey;
 };
 
 /// A scene to render at once: `rig` in a hall with mat, lanes, boards around it, a few objects
@@ -202,5 +216,7 @@ struct Scene {
 /// Reads a scene file. Strict: every unknown key, wrong type and value out of range is reported
 /// with its line, all at once (InputError).
 [[nodiscard]] Scene read_scene(const std::filesystem::path& path);
+/// The same from the file's text; `file` names it in problems.
+[[nodiscard]] Scene parse_scene(const std::string& text, const std::string& file);
 
 }  // namespace rondel::scene

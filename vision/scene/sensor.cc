@@ -2,8 +2,8 @@
 #include <array>
 #include <cassert>
 #include <cmath>
-#include <opencv2/imgcodecs.hpp>
 #include <opencv2/imgproc.hpp>
+#include <vector>
 
 #include "vision/scene/light_colour.h"
 #include "vision/scene/noise.h"
@@ -199,11 +199,6 @@ cv::Mat expose(const cv::Mat& linear_bgr,
         out[u] = {widened(out[u][0], 5), widened(out[u][1], 6), widened(out[u][2], 5)};
       }
     }
-  }
-  if (sensor.jpeg_quality > 0) {
-    std::vector<unsigned char> bytes;
-    cv::imencode(".jpg", bgr, bytes, {cv::IMWRITE_JPEG_QUALITY, sensor.jpeg_quality});
-    bgr = cv::imdecode(bytes, cv::IMREAD_COLOR);
   }
   return bgr;
 }

@@ -39,7 +39,7 @@ constexpr std::array kPlaceFlags = {
 };
 
 constexpr std::array kSceneFlags = {
-    Flag{"--out", "FOLDER", "Where frames and truth.json go."},
+    Flag{"--threads", "COUNT", "Threads to render with; all of the machine's when not given."},
 };
 
 constexpr std::span<const Flag> kNoFlags = {};
@@ -98,7 +98,7 @@ constexpr std::array kCommands = {
             kNoFlags,
             compare_command},
     Command{"scene",
-            "SCENE",
+            "SCENE OUT",
             "Render frames with known truth from a scene description.",
             kSceneFlags,
             scene_command},

@@ -132,8 +132,9 @@ class Rate {
 
 }  // namespace
 
-Batch make_batch(const Workspace& workspace) {
-  const std::vector<TapeRow>& tape = workspace.tape;
+TapeBatch make_batch(const VenueSpec& venue,
+                     const std::vector<FrameFile>& frames,
+                     const std::vector<TapeRow>& tape) {
   if (tape.empty()) {
     throw InputError("tape.csv",
                      "has no rows; write one row per measured object: "
@@ -149,12 +150,12 @@ Batch make_batch(const Workspace& workspace) {
   std::vector<Problem> problems;
   find_contradictions(tape, problems);
   std::map<std::string, const FrameFile*> files;
-  for (const FrameFile& file : workspace.frames) files[file.image] = &file;
+  for (const FrameFile& file : frames) files[file.image] = &file;
   std::map<std::string, int> index_of;  // sorted by name
   for (const TapeRow& row : tape) {
     if (!files.contains(row.image)) {
       problems.push_back({place(row), fmt::format("image {}: there is no such frame", row.image)});
-    } else if (object_index(workspace.venue, row.object) < 0) {
+    } else if (object_index(venue, row.object) < 0) {
       problems.push_back(
           {place(row), fmt::format("object {}: venue.yaml has no such object", row.object)});
     } else {
@@ -163,8 +164,7 @@ Batch make_batch(const Workspace& workspace) {
   }
   if (!problems.empty()) throw InputError(std::move(problems));
 
-  Batch batch;
-  batch.folder = workspace.folder;
+  TapeBatch batch;
   for (auto& [image, index] : index_of) {
     index = static_cast<int>(batch.images.size());
     batch.images.push_back({image, files[image]->light});
@@ -174,7 +174,7 @@ Batch make_batch(const Workspace& workspace) {
     verdict::TapeEntry entry;
     entry.line = row.line;
     entry.image = index_of[row.image];
-    entry.object = object_index(workspace.venue, row.object);
+    entry.object = object_index(venue, row.object);
     entry.range_m = row.range_m;
     entry.bearing_rad = row.bearing_rad;
     entry.absent = row.absent;
@@ -187,7 +187,7 @@ Batch make_batch(const Workspace& workspace) {
   return batch;
 }
 
-void mark_hidden(const Examiner& examiner, const VenueSpec& venue, Batch& batch) {
+void mark_hidden(const Examiner& examiner, const VenueSpec& venue, TapeBatch& batch) {
   if (examiner.curve == nullptr) return;
   const cv::Mat& mask = examiner.detector.mask;
   for (verdict::TapeEntry& entry : batch.tape) {
@@ -203,7 +203,10 @@ void mark_hidden(const Examiner& examiner, const VenueSpec& venue, Batch& batch)
   }
 }
 
-Examined examine(const Examiner& examiner, const Batch& batch, Shard shard, Progress& progress) {
+Examined examine(const Examiner& examiner,
+                 const TapeBatch& batch,
+                 Shard shard,
+                 Progress& progress) {
   Examined examined;
   const std::size_t total = batch.images.size();
   examined.finds.resize(total);
@@ -229,7 +232,7 @@ Examined examine(const Examiner& examiner, const Batch& batch, Shard shard, Prog
       }
       const std::size_t i = todo[n];
       try {
-        examined.finds[i] = finds_in(examiner, load_image(batch.paths[i], examiner.rig));
+        examined.finds[i] = finds_in(examiner, vision::load_image(batch.paths[i], examiner.camera));
         examined.done[i] = 1;
       } catch (const InputError& error) {
         failures[i] = error.problems().front().what;

@@ -15,8 +15,7 @@ namespace rondel::app {
 
 /// Images and tape sheet of one check, sorted so that the result does not depend on the sheet's
 /// order of images: images by name, rows of an image in the sheet's order.
-struct Batch {
-  std::filesystem::path folder;  ///< holds frames/ and tape.csv
+struct TapeBatch {
   std::vector<verdict::ImageEntry> images;
   std::vector<std::filesystem::path> paths;  ///< of the images
   std::vector<verdict::TapeEntry> tape;
@@ -27,19 +26,21 @@ inline constexpr std::size_t kMostTapeRows = 200000;
 
 /// The images that `tape` names. InputError, all at once, naming line by line: an empty sheet, too
 /// many rows, images that do not exist, rows listed twice, objects both absent and present.
-[[nodiscard]] Batch make_batch(const Workspace& workspace);
+[[nodiscard]] TapeBatch make_batch(const VenueSpec& venue,
+                                   const std::vector<FrameFile>& frames,
+                                   const std::vector<TapeRow>& tape);
 
 /// What a board needs to answer, and what is needed beside it to say where its errors come from.
 struct Examiner {
   vision::DetectorSetup detector;
   const link::BoardTables* tables = nullptr;
   const FloorMap* curve = nullptr;  ///< none: errors are not split
-  RigSpec rig;
+  CameraSpec camera;
   double pixel_noise = 0.3;  ///< one standard deviation of a blob's place, px
 };
 
 /// Marks rows whose place is behind the mask or out of sight.
-void mark_hidden(const Examiner& examiner, const VenueSpec& venue, Batch& batch);
+void mark_hidden(const Examiner& examiner, const VenueSpec& venue, TapeBatch& batch);
 
 /// Which images to look at: those whose index is `index` modulo `count`.
 struct Shard {
@@ -57,7 +58,7 @@ struct Examined {
 /// Looks at every image of the shard on all cores, as the boards would. Each core holds one image
 /// at a time. Unreadable images are reported together (InputError, by tape line).
 [[nodiscard]] Examined examine(const Examiner& examiner,
-                               const Batch& batch,
+                               const TapeBatch& batch,
                                Shard shard,
                                Progress& progress);
 

@@ -13,7 +13,7 @@ namespace rondel::app {
 /// Everything check.json, check.csv and check.xml are written from.
 struct CheckReport {
   const VenueSpec* venue = nullptr;
-  const Batch* batch = nullptr;  ///< only images that were looked at, with their rows
+  const TapeBatch* batch = nullptr;  ///< only images that were looked at, with their rows
   std::vector<std::vector<verdict::Find>> finds;
   verdict::Verdict verdict;
   nlohmann::ordered_json causes = nlohmann::ordered_json::array();
