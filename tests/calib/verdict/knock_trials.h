@@ -124,7 +124,8 @@ inline Calibrated calibrate(const scene::SceneRig& truth, int marks, Dice& dice)
   using Square = Eigen::Matrix<double, kParameters, kParameters>;
   const auto rig_at = [](const Vector& x) {
     std::array<double, kParameters> off{};
-    for (std::size_t j = 0; j < kParameters; ++j) off[j] = x[static_cast<Eigen::Index>(j)] * kSpread[j];
+    for (std::size_t j = 0; j < kParameters; ++j)
+      off[j] = x[static_cast<Eigen::Index>(j)] * kSpread[j];
     return geometry(off);
   };
   const auto pixel = [&](const optics::RigGeometry<double>& g, FloorSpot s) {
@@ -173,7 +174,8 @@ inline Calibrated calibrate(const scene::SceneRig& truth, int marks, Dice& dice)
   const Square covariance = information.inverse();
   const Eigen::SelfAdjointEigenSolver<Square> eigen(covariance);
   for (int m = 0; m < kParameters; ++m) {
-    const Vector mode = eigen.eigenvectors().col(m) * std::sqrt(std::max(0.0, eigen.eigenvalues()[m]));
+    const Vector mode =
+        eigen.eigenvectors().col(m) * std::sqrt(std::max(0.0, eigen.eigenvalues()[m]));
     out.modes.push_back(rig_at(x + mode));
   }
   return out;
@@ -182,16 +184,18 @@ inline Calibrated calibrate(const scene::SceneRig& truth, int marks, Dice& dice)
 enum class Kind { none, tilt, centre, eye_height, focal, heading };
 inline constexpr std::array<const char*, 6> kKindIds = {
     "none", "tilt", "centre", "eye_height", "focal", "heading"};
-/// The sizes of issue's table: 1 degree, 3 px, 10 mm, 3 %, 5 degrees.
-inline constexpr std::array<double, 6> kSizes = {0.0, kRadPerDeg, 3.0, 0.010, 0.03, 5.0 * kRadPerDeg};
+/// 1 degree, 3 px, 10 mm, 3 %, 5 degrees.
+inline constexpr std::array<double, 6> kSizes = {
+    0.0, kRadPerDeg, 3.0, 0.010, 0.03, 5.0 * kRadPerDeg};
 
-/// The truth knocked by the table's size into direction `angle_rad` (its cosine's sign where there is
-/// no direction).
+/// The truth knocked by the table's size into direction `angle_rad` (its cosine's sign where there
+/// is no direction).
 inline scene::SceneRig knock(scene::SceneRig rig, Kind kind, double angle_rad) {
   const double size = kSizes[static_cast<std::size_t>(kind)];
   const double sign = std::cos(angle_rad) >= 0.0 ? 1.0 : -1.0;
   switch (kind) {
-    case Kind::none: break;
+    case Kind::none:
+      break;
     case Kind::tilt:
       rig.tilt_x_rad += size * std::cos(angle_rad);
       rig.tilt_y_rad += size * std::sin(angle_rad);
@@ -200,9 +204,15 @@ inline scene::SceneRig knock(scene::SceneRig rig, Kind kind, double angle_rad) {
       rig.principal_du_px += size * std::cos(angle_rad);
       rig.principal_dv_px += size * std::sin(angle_rad);
       break;
-    case Kind::eye_height: rig.eye_height_m += sign * size; break;
-    case Kind::focal: rig.focal_px *= 1.0 + sign * size; break;
-    case Kind::heading: rig.heading_rad += sign * size; break;
+    case Kind::eye_height:
+      rig.eye_height_m += sign * size;
+      break;
+    case Kind::focal:
+      rig.focal_px *= 1.0 + sign * size;
+      break;
+    case Kind::heading:
+      rig.heading_rad += sign * size;
+      break;
   }
   return rig;
 }
@@ -284,12 +294,12 @@ inline Diagnosis diagnose_rows(const Calibrated& calibrated, const std::vector<S
   return diagnose(*model, rows, sighting_noise(), 2.2, [](FloorSpot) { return true; });
 }
 
-enum class Answer { right, undecided, wrong };
+enum class Answer { right, undecided, silent, wrong };
 /// Right: the one named cause is the knock. Undecided: it is among those named as not to be told
-/// apart, or nothing is named.
+/// apart. Silent: nothing is named.
 inline Answer judge_answer(const Diagnosis& diagnosis, Kind kind) {
   const std::string id = kKindIds[static_cast<std::size_t>(kind)];
-  if (diagnosis.causes == 0) return kind == Kind::none ? Answer::right : Answer::undecided;
+  if (diagnosis.causes == 0) return kind == Kind::none ? Answer::right : Answer::silent;
   if (diagnosis.causes == 1) {
     return diagnosis.hypotheses.front().id == id ? Answer::right : Answer::wrong;
   }
@@ -297,6 +307,145 @@ inline Answer judge_answer(const Diagnosis& diagnosis, Kind kind) {
     if (diagnosis.hypotheses[static_cast<std::size_t>(i)].id == id) return Answer::undecided;
   }
   return Answer::wrong;
+}
+
+struct Tally {
+  int right = 0;
+  int undecided = 0;
+  int silent = 0;
+  int wrong = 0;
+  void add(Answer answer) {
+    right += answer == Answer::right ? 1 : 0;
+    undecided += answer == Answer::undecided ? 1 : 0;
+    silent += answer == Answer::silent ? 1 : 0;
+    wrong += answer == Answer::wrong ? 1 : 0;
+  }
+};
+
+struct Trial {
+  scene::SceneRig knocked;
+  Calibrated calibrated;
+  std::vector<Sighting> rows;
+};
+/// A rig is built, calibrated, knocked, and checked.
+inline Trial one_trial(Kind kind, int rows, int marks, Dice& dice) {
+  const scene::SceneRig before = built(dice);
+  Trial trial;
+  trial.calibrated = calibrate(before, marks, dice);
+  trial.knocked = knock(before, kind, dice.uniform(-std::numbers::pi, std::numbers::pi));
+  trial.rows = look_at(trial.knocked, rows, dice);
+  return trial;
+}
+
+struct WrongRowTrial {
+  Calibrated calibrated;
+  std::vector<Sighting> rows;
+  int wrong = 0;  ///< line
+  FloorSpot right;
+};
+/// One row among `rows` says something people write by mistake: a digit off, centimetres swapped,
+/// the bearing of another row, the sign of a bearing.
+inline WrongRowTrial one_wrong_row(int rows, int marks, Dice& dice) {
+  const scene::SceneRig rig = built(dice);
+  WrongRowTrial trial;
+  trial.calibrated = calibrate(rig, marks, dice);
+  trial.rows = look_at(rig, rows, dice);
+  const auto at = static_cast<std::size_t>(dice.whole(rows));
+  Sighting& row = trial.rows[at];
+  trial.wrong = row.line;
+  trial.right = row.tape;
+  switch (dice.whole(4)) {
+    case 0:  // 10 cm misread
+      row.tape.range_m += row.tape.range_m > 0.4 && dice.whole(2) == 0 ? -0.1 : 0.1;
+      break;
+    case 1:  // 15 degrees misread
+      row.tape.bearing_rad = wrap_angle(row.tape.bearing_rad + 15.0 * kRadPerDeg);
+      break;
+    case 2:  // left for right
+      if (std::abs(std::sin(row.tape.bearing_rad)) < 0.1) {
+        row.tape.bearing_rad = wrap_angle(row.tape.bearing_rad + 0.5);
+      } else {
+        row.tape.bearing_rad = -row.tape.bearing_rad;
+      }
+      break;
+    default:  // the next row's place
+      row.tape = trial.rows[(at + 1) % trial.rows.size()].tape;
+      break;
+  }
+  return trial;
+}
+
+struct WrongRowAnswer {
+  bool named = false;      ///< the row is among those named wrong
+  bool alone = false;      ///< and no other is
+  bool corrected = false;  ///< and what it should read is within 6 % and 3 degrees of the truth
+};
+inline WrongRowAnswer judge_wrong_row(const WrongRowTrial& trial, const Diagnosis& diagnosis) {
+  WrongRowAnswer answer;
+  if (diagnosis.causes == 0) return answer;
+  const Hypothesis& first = diagnosis.hypotheses.front();
+  const std::vector<WrongRow>& rows = first.id == "tape" ? first.rows : diagnosis.odd_rows;
+  for (const WrongRow& row : rows) {
+    if (row.line != trial.wrong) continue;
+    answer.named = first.id == "tape";
+    answer.alone = answer.named && rows.size() == 1 && diagnosis.causes == 1;
+    answer.corrected =
+        answer.named && row.likely &&
+        std::abs(row.likely->range_m / trial.right.range_m - 1.0) < 0.06 &&
+        std::abs(wrap_angle(row.likely->bearing_rad - trial.right.bearing_rad)) < 3.0 * kRadPerDeg;
+  }
+  return answer;
+}
+
+/// Mean squares of relative range errors over the floor.
+struct RepairErrors {
+  double before2 = 0.0;
+  double repaired2 = 0.0;
+  double recalibrated2 = 0.0;
+  int n = 0;
+  void add(const RepairErrors& other) {
+    before2 += other.before2;
+    repaired2 += other.repaired2;
+    recalibrated2 += other.recalibrated2;
+    n += other.n;
+  }
+  [[nodiscard]] double before() const { return std::sqrt(before2 / n); }
+  [[nodiscard]] double repaired() const { return std::sqrt(repaired2 / n); }
+  [[nodiscard]] double recalibrated() const { return std::sqrt(recalibrated2 / n); }
+};
+
+/// The knock refitted from 10 rows beside a full calibration of the knocked robot on 10 marks of
+/// its own. Compared over the floor from 0.3 to 2 m.
+inline RepairErrors one_repair(Kind kind, int marks, Dice& dice) {
+  const Trial trial = one_trial(kind, 10, marks, dice);
+  const Calibrated anew = calibrate(trial.knocked, 10, dice);
+  const auto model = knocks_of_rig(trial.calibrated.rig, trial.calibrated.modes);
+  const Diagnosis diagnosis =
+      diagnose(*model, trial.rows, sighting_noise(), 2.2, [](FloorSpot) { return true; });
+  optics::RigGeometry<double> repaired = trial.calibrated.rig;
+  if (diagnosis.causes > 0 && diagnosis.hypotheses.front().kind) {
+    const Hypothesis& cause = diagnosis.hypotheses.front();
+    repaired = knocked(repaired, *cause.kind, cause.amounts);
+  }
+  RepairErrors errors;
+  for (int r = 0; r < 6; ++r) {
+    for (int b = 0; b < 12; ++b) {
+      const FloorSpot spot{0.3 * std::pow(2.0 / 0.3, r / 5.0),
+                           wrap_angle(b * std::numbers::pi / 6.0)};
+      const auto at = scene::pixel_of(trial.knocked, spot, kBallHeightM);
+      if (!at) continue;
+      const auto off = [&](const optics::RigGeometry<double>& rig) {
+        const auto floor = optics::pixel_to_floor(rig, at->u_px, at->v_px, kBallHeightM);
+        // A pixel beyond the horizon counts as an error of all of the range.
+        return floor ? std::pow(std::hypot(floor->x_m, floor->y_m) / spot.range_m - 1.0, 2) : 1.0;
+      };
+      errors.before2 += off(trial.calibrated.rig);
+      errors.repaired2 += off(repaired);
+      errors.recalibrated2 += off(anew.rig);
+      ++errors.n;
+    }
+  }
+  return errors;
 }
 
 }  // namespace rondel::verdict::trials
