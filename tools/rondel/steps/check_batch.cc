@@ -1,4 +1,3 @@
-#if __has_include("vision/frames/load.h")
 #include "tools/rondel/steps/check_batch.h"
 
 #include <fmt/core.h>
@@ -271,4 +270,3 @@ Examined examine(const Examiner& examiner,
 }
 
 }  // namespace rondel::app
-#endif
