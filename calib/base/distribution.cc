@@ -2,6 +2,7 @@
 
 #include <cassert>
 #include <cmath>
+#include <initializer_list>
 
 namespace rondel {
 namespace {
