@@ -1,0 +1,268 @@
+#include "vision/detect/detect.h"
+
+#include <algorithm>
+#include <cassert>
+#include <cmath>
+#include <cstring>
+#include <limits>
+
+namespace rondel::vision {
+namespace {
+
+/// Pixels of one class beside each other in a row.
+struct Run {
+  int v = 0;
+  int from = 0;
+  int end = 0;  ///< one past the last
+  int blob = 0;
+  std::uint8_t cls = 0;
+};
+
+/// Sums over a blob; merged as blobs turn out to be one.
+struct Sums {
+  std::int64_t area = 0;
+  std::int64_t u = 0;
+  std::int64_t v = 0;
+  int left = std::numeric_limits<int>::max();
+  int right = -1;
+  int top = std::numeric_limits<int>::max();
+  int bottom = -1;
+  bool cut = false;
+  std::uint8_t cls = 0;
+
+  void add(const Sums& other) {
+    area += other.area;
+    u += other.u;
+    v += other.v;
+    left = std::min(left, other.left);
+    right = std::max(right, other.right);
+    top = std::min(top, other.top);
+    bottom = std::max(bottom, other.bottom);
+    cut |= other.cut;
+  }
+};
+
+/// Disjoint sets of run labels.
+class Labels {
+ public:
+  int fresh() {
+    parent_.push_back(static_cast<int>(parent_.size()));
+    return parent_.back();
+  }
+  int root(int label) {
+    while (parent_[index(label)] != label) {
+      parent_[index(label)] = parent_[index(parent_[index(label)])];
+      label = parent_[index(label)];
+    }
+    return label;
+  }
+  void join(int a, int b) {
+    a = root(a);
+    b = root(b);
+    parent_[index(std::max(a, b))] = std::min(a, b);
+  }
+  [[nodiscard]] std::size_t size() const { return parent_.size(); }
+
+ private:
+  static std::size_t index(int k) { return static_cast<std::size_t>(k); }
+  std::vector<int> parent_;
+};
+
+/// Runs of all classes, row by row, labelled so that touching runs of a class (8-neighbours) share
+/// a root.
+std::vector<Run> label_runs(const colour::ClassTable& table,
+                            const cv::Mat& mask,
+                            const cv::Mat& bgr,
+                            Labels& labels) {
+  std::vector<Run> runs;
+  const int width = bgr.cols;
+  std::vector<std::uint8_t> classes(static_cast<std::size_t>(width) + 8, 0);
+  const unsigned shift_r = 8U - static_cast<unsigned>(table.bits_r);
+  const unsigned shift_g = 8U - static_cast<unsigned>(table.bits_g);
+  const unsigned shift_b = 8U - static_cast<unsigned>(table.bits_b);
+  const unsigned place_g = static_cast<unsigned>(table.bits_b);
+  const unsigned place_r = place_g + static_cast<unsigned>(table.bits_g);
+  const std::uint8_t* entries = table.classes.data();
+  std::size_t row_above = 0;
+  std::size_t row_start = 0;
+  for (int v = 0; v < bgr.rows; ++v) {
+    const auto* pixel = bgr.ptr<std::uint8_t>(v);
+    const auto* open = mask.ptr<std::uint8_t>(v);
+    for (int u = 0; u < width; ++u, pixel += 3) {
+      const unsigned at = (static_cast<unsigned>(pixel[2] >> shift_r) << place_r) |
+                          (static_cast<unsigned>(pixel[1] >> shift_g) << place_g) |
+                          static_cast<unsigned>(pixel[0] >> shift_b);
+      classes[static_cast<std::size_t>(u)] = entries[at] & open[u];
+    }
+    row_above = row_start;
+    row_start = runs.size();
+    std::size_t above = row_above;
+    for (int u = 0; u < width;) {
+      const std::uint8_t* at = classes.data() + u;
+      if (*at == 0) {
+        std::uint64_t eight = 0;
+        std::memcpy(&eight, at, sizeof eight);
+        u += eight == 0 ? 8 : 1;
+        continue;
+      }
+      Run run{v, u, u + 1, -1, *at};
+      while (run.end < width && classes[static_cast<std::size_t>(run.end)] == run.cls) ++run.end;
+      u = run.end;
+      while (above < row_start && runs[above].end < run.from) ++above;
+      for (std::size_t k = above; k < row_start && runs[k].from <= run.end; ++k) {
+        if (runs[k].cls != run.cls || runs[k].v != v - 1) continue;
+        if (run.blob < 0) {
+          run.blob = labels.root(runs[k].blob);
+        } else {
+          labels.join(run.blob, runs[k].blob);
+        }
+      }
+      if (run.blob < 0) run.blob = labels.fresh();
+      runs.push_back(run);
+    }
+  }
+  return runs;
+}
+
+/// Whether a run has a neighbour (above, below, beside) that is masked or outside the image.
+bool touches_edge(const Run& run, const cv::Mat& mask) {
+  if (run.v == 0 || run.v == mask.rows - 1 || run.from == 0 || run.end == mask.cols) return true;
+  const auto* row = mask.ptr<std::uint8_t>(run.v);
+  if (row[run.from - 1] == 0 || row[run.end] == 0) return true;
+  const auto* above = mask.ptr<std::uint8_t>(run.v - 1);
+  const auto* below = mask.ptr<std::uint8_t>(run.v + 1);
+  for (int u = run.from; u < run.end; ++u) {
+    if (above[u] == 0 || below[u] == 0) return true;
+  }
+  return false;
+}
+
+/// The blob's inner edge on the line from the centre to its centroid: the mean over the lines a
+/// pixel beside it of the nearest pixel's near side.
+ImagePoint inner_edge(const std::vector<Run>& runs,
+                      const std::vector<int>& blob_of,
+                      int blob,
+                      ImagePoint centre,
+                      ImagePoint centroid) {
+  const double du = centroid.u_px - centre.u_px;
+  const double dv = centroid.v_px - centre.v_px;
+  const double length = std::hypot(du, dv);
+  if (length < 1e-9) return centroid;
+  const double cu = du / length;
+  const double cv = dv / length;
+  constexpr int kLines = 3;
+  std::array<double, kLines> nearest{};
+  nearest.fill(std::numeric_limits<double>::max());
+  for (const Run& run : runs) {
+    if (blob_of[static_cast<std::size_t>(run.blob)] != blob) continue;
+    for (int u = run.from; u < run.end; ++u) {
+      const double x = u - centre.u_px;
+      const double y = run.v - centre.v_px;
+      const double beside = y * cu - x * cv;
+      const auto line = static_cast<int>(std::floor(beside + 0.5 * kLines));
+      if (line < 0 || line >= kLines) continue;
+      double& near = nearest[static_cast<std::size_t>(line)];
+      near = std::min(near, x * cu + y * cv);
+    }
+  }
+  double sum = 0.0;
+  int lines = 0;
+  for (const double near : nearest) {
+    if (near == std::numeric_limits<double>::max()) continue;
+    sum += near;
+    ++lines;
+  }
+  if (lines == 0) return centroid;
+  const double edge = sum / lines - 0.5;
+  return {centre.u_px + edge * cu, centre.v_px + edge * cv};
+}
+
+/// Whether a blob's area fits the object at the range where it is seen. A ball's outline is known;
+/// of a box or post only the width is, so that bounds are wide. What is cut or half hidden is
+/// small.
+bool size_fits(const DetectorSetup& setup, const ObjectSpec& object, const Blob& blob) {
+  if (setup.map == nullptr || object.diameter_m <= 0.0) return true;
+  const double height_m = object.seen_height_m();
+  const double radius_m = 0.5 * object.diameter_m;
+  const auto spot = setup.map->floor_at(blob.measured, height_m);
+  if (!spot) return true;  // out of the curve's domain: the mask's business
+  if (spot->range_m <= radius_m) return true;
+  const auto distance = [](ImagePoint a, ImagePoint b) {
+    return std::hypot(a.u_px - b.u_px, a.v_px - b.v_px);
+  };
+  const double half_rad = std::asin(std::min(1.0, radius_m / spot->range_m));
+  const auto left = setup.map->pixel_of({spot->range_m, spot->bearing_rad + half_rad}, height_m);
+  const auto right = setup.map->pixel_of({spot->range_m, spot->bearing_rad - half_rad}, height_m);
+  if (!left || !right) return true;
+  const double across_px = distance(*left, *right);
+  const double slack_px = 8.0;
+  if (object.shape != Shape::ball) {
+    const double square = across_px * across_px;
+    return blob.area_px <= 8.0 * square + slack_px && blob.area_px + slack_px >= 0.02 * square;
+  }
+  // The outline is a circle across the line of sight, whose slope two heights tell.
+  const auto lower = setup.map->floor_at(blob.measured, 0.0);
+  if (!lower) return true;
+  const double slope = lower->range_m - spot->range_m;  // over a drop of height_m
+  const double norm = std::hypot(slope, height_m);
+  if (norm <= 0.0) return true;
+  const double along_m = radius_m * height_m / norm;
+  const double up_m = radius_m * slope / norm;
+  const auto near =
+      setup.map->pixel_of({spot->range_m - along_m, spot->bearing_rad}, height_m - up_m);
+  const auto far =
+      setup.map->pixel_of({spot->range_m + along_m, spot->bearing_rad}, height_m + up_m);
+  if (!near || !far) return true;
+  const double expected = 0.25 * 3.14159265358979 * across_px * distance(*near, *far);
+  return blob.area_px <= 2.5 * expected + slack_px && blob.area_px + slack_px >= 0.1 * expected;
+}
+
+}  // namespace
+
+std::vector<Blob> detect(const DetectorSetup& setup, const cv::Mat& bgr) {
+  assert(bgr.type() == CV_8UC3 && setup.mask.type() == CV_8U && setup.mask.size() == bgr.size());
+  Labels labels;
+  const std::vector<Run> runs = label_runs(setup.table, setup.mask, bgr, labels);
+  std::vector<int> blob_of(labels.size());
+  std::vector<Sums> sums(labels.size());
+  for (std::size_t k = 0; k < labels.size(); ++k) blob_of[k] = labels.root(static_cast<int>(k));
+  for (const Run& run : runs) {
+    Sums& sum = sums[static_cast<std::size_t>(blob_of[static_cast<std::size_t>(run.blob)])];
+    const std::int64_t length = run.end - run.from;
+    Sums one;
+    one.area = length;
+    one.u = length * (run.from + run.end - 1) / 2;
+    one.v = length * run.v;
+    one.left = run.from;
+    one.right = run.end - 1;
+    one.top = run.v;
+    one.bottom = run.v;
+    one.cut = !sum.cut && touches_edge(run, setup.mask);
+    sum.cls = run.cls;
+    sum.add(one);
+  }
+  std::vector<Blob> blobs;
+  for (std::size_t k = 0; k < sums.size(); ++k) {
+    const Sums& sum = sums[k];
+    if (sum.area < setup.least_area_px || sum.cls > setup.objects.size()) continue;
+    Blob blob;
+    blob.object = sum.cls - 1;
+    const auto area = static_cast<double>(sum.area);
+    blob.centroid = {static_cast<double>(sum.u) / area, static_cast<double>(sum.v) / area};
+    blob.area_px = static_cast<int>(sum.area);
+    blob.box = {sum.left, sum.top, sum.right - sum.left + 1, sum.bottom - sum.top + 1};
+    blob.cut_by_mask = sum.cut;
+    const ObjectSpec& object = setup.objects[static_cast<std::size_t>(blob.object)];
+    blob.measured =
+        object.shape == Shape::ball
+            ? blob.centroid
+            : inner_edge(runs, blob_of, static_cast<int>(k), setup.centre, blob.centroid);
+    if (size_fits(setup, object, blob)) blobs.push_back(blob);
+  }
+  std::stable_sort(blobs.begin(), blobs.end(), [](const Blob& a, const Blob& b) {
+    return a.object != b.object ? a.object < b.object : a.area_px > b.area_px;
+  });
+  return blobs;
+}
+
+}  // namespace rondel::vision
