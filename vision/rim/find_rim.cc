@@ -1,0 +1,355 @@
+#include "vision/rim/find_rim.h"
+
+#include <Eigen/Dense>
+#include <algorithm>
+#include <array>
+#include <cmath>
+#include <numbers>
+#include <opencv2/imgproc.hpp>
+#include <random>
+
+#include "vision/rim/ellipse.h"
+#include "vision/rim/radial_edges.h"
+
+namespace rondel::vision {
+namespace {
+
+constexpr double kTwoPi = 2.0 * std::numbers::pi;
+
+/// How well a circle is drawn in the edges.
+struct Support {
+  double share = 0.0;     ///< of the rays inside the image, those with an edge on the circle
+  double falling = 0.0;   ///< of those, the ones that get darker outwards
+  double in_image = 0.0;  ///< share of the circumference inside the image
+};
+
+/// Calls `visit(ray, nearest edge or null)` for each ray that meets the circle inside the image.
+template <class Visit>
+void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Visit visit) {
+  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
+    const double r = circle.radius_from_px(edges.from, edges.azimuth_rad(ray));
+    if (r > edges.end_px[ray]) continue;
+    const auto& candidates = edges.rays[ray];
+    auto above = std::lower_bound(
+        candidates.begin(), candidates.end(), r, [](const RadialEdge& e, double value) {
+          return e.radius_px < value;
+        });
+    const RadialEdge* best = nullptr;
+    double distance = within_px;
+    if (above != candidates.end() && above->radius_px - r <= distance) {
+      best = &*above;
+      distance = above->radius_px - r;
+    }
+    if (above != candidates.begin() && r - std::prev(above)->radius_px <= distance) {
+      best = &*std::prev(above);
+    }
+    visit(ray, best);
+  }
+}
+
+Support support_of(const RadialEdges& edges, const Ellipse& circle, double within_px) {
+  int met = 0;
+  int hit = 0;
+  int falling = 0;
+  walk(edges, circle, within_px, [&](std::size_t, const RadialEdge* edge) {
+    ++met;
+    if (edge == nullptr) return;
+    ++hit;
+    if (edge->step < 0.0) ++falling;
+  });
+  Support support;
+  support.in_image = met / static_cast<double>(edges.rays.size());
+  support.share = met > 0 ? hit / static_cast<double>(met) : 0.0;
+  support.falling = hit > 0 ? falling / static_cast<double>(hit) : 0.0;
+  return support;
+}
+
+bool holds(const Ellipse& circle, ImagePoint at) {
+  return std::hypot(at.u_px - circle.p[0], at.v_px - circle.p[1]) < 0.9 * circle.p[2];
+}
+
+/// Kasa's least squares circle (1976) through the edges on `circle`.
+std::optional<Ellipse> refitted(const RadialEdges& edges, const Ellipse& circle, double within_px) {
+  Eigen::Matrix3d normal = Eigen::Matrix3d::Zero();
+  Eigen::Vector3d right = Eigen::Vector3d::Zero();
+  walk(edges, circle, within_px, [&](std::size_t ray, const RadialEdge* edge) {
+    if (edge == nullptr) return;
+    const double azimuth = edges.azimuth_rad(ray);
+    const double u = edge->radius_px * std::cos(azimuth);
+    const double v = edge->radius_px * std::sin(azimuth);
+    const Eigen::Vector3d row(u, v, 1.0);
+    normal += row * row.transpose();
+    right += row * (u * u + v * v);
+  });
+  if (normal(2, 2) < 6.0 || std::abs(normal.determinant()) < 1e-6) return std::nullopt;
+  const Eigen::Vector3d x = normal.inverse() * right;
+  const double squared = x[2] + 0.25 * (x[0] * x[0] + x[1] * x[1]);
+  if (squared <= 0.0) return std::nullopt;
+  return rondel::vision::circle({edges.from.u_px + 0.5 * x[0], edges.from.v_px + 0.5 * x[1]},
+                                std::sqrt(squared));
+}
+
+struct Candidate {
+  Ellipse circle;
+  Support support;
+};
+
+struct RadiusRange {
+  double low_px = 0.0;
+  double high_px = 0.0;
+};
+
+/// Distinct circles that the edges draw, best supported first (Fischler and Bolles, 1981).
+std::vector<Candidate> circles_in(const RadialEdges& edges,
+                                  RadiusRange radius,
+                                  double within_px,
+                                  double least_in_image) {
+  std::vector<std::size_t> rays;
+  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
+    if (!edges.rays[ray].empty()) rays.push_back(ray);
+  }
+  std::vector<Candidate> found;
+  if (rays.size() < 12) return found;
+  std::minstd_rand random(20011);
+  const auto pick = [&](std::size_t count) { return static_cast<std::size_t>(random()) % count; };
+  const auto point = [&](std::size_t ray) {
+    const auto& candidates = edges.rays[ray];
+    const double r = candidates[pick(candidates.size())].radius_px;
+    const double azimuth = edges.azimuth_rad(ray);
+    return ImagePoint{edges.from.u_px + r * std::cos(azimuth),
+                      edges.from.v_px + r * std::sin(azimuth)};
+  };
+  const std::size_t apart = edges.rays.size() / 8;
+  const auto far = [&](std::size_t a, std::size_t b) {
+    const std::size_t d = a > b ? a - b : b - a;
+    return std::min(d, edges.rays.size() - d) >= apart;
+  };
+  constexpr int kDraws = 12000;
+  constexpr std::size_t kKept = 60;
+  for (int draw = 0; draw < kDraws; ++draw) {
+    const std::size_t a = rays[pick(rays.size())];
+    const std::size_t b = rays[pick(rays.size())];
+    const std::size_t c = rays[pick(rays.size())];
+    if (!far(a, b) || !far(b, c) || !far(a, c)) continue;
+    const auto circle = circle_through(point(a), point(b), point(c));
+    if (!circle || circle->p[2] < radius.low_px || circle->p[2] > radius.high_px ||
+        !holds(*circle, edges.from)) {
+      continue;
+    }
+    const Support support = support_of(edges, *circle, within_px);
+    if (support.in_image < least_in_image || support.share < 0.3) continue;
+    found.push_back({*circle, support});
+    if (found.size() >= 4 * kKept) {
+      std::nth_element(
+          found.begin(),
+          found.begin() + kKept,
+          found.end(),
+          [](const Candidate& x, const Candidate& y) { return x.support.share > y.support.share; });
+      found.resize(kKept);
+    }
+  }
+  for (Candidate& candidate : found) {
+    for (const double slack : {1.5, 1.0}) {
+      const auto better = refitted(edges, candidate.circle, slack * within_px);
+      if (!better || !holds(*better, edges.from) || better->p[2] < radius.low_px ||
+          better->p[2] > radius.high_px) {
+        break;
+      }
+      const Support support = support_of(edges, *better, within_px);
+      if (support.share < candidate.support.share || support.in_image < least_in_image) break;
+      candidate = {*better, support};
+    }
+  }
+  std::stable_sort(found.begin(), found.end(), [](const Candidate& x, const Candidate& y) {
+    return x.support.share > y.support.share;
+  });
+  std::vector<Candidate> distinct;
+  for (const Candidate& candidate : found) {
+    const bool known = std::any_of(distinct.begin(), distinct.end(), [&](const Candidate& other) {
+      return (candidate.circle.p.head<3>() - other.circle.p.head<3>()).cwiseAbs().sum() <
+             3.0 * within_px;
+    });
+    if (!known) distinct.push_back(candidate);
+  }
+  return distinct;
+}
+
+double median(std::vector<double> values) {
+  const auto middle = values.begin() + static_cast<std::ptrdiff_t>(values.size() / 2);
+  std::nth_element(values.begin(), middle, values.end());
+  return *middle;
+}
+
+/// Median level between two fractions of the circle's radius; none outside the image.
+std::optional<double> level_between(const cv::Mat& grey,
+                                    const Ellipse& circle,
+                                    double from_px,
+                                    double to_px) {
+  std::vector<double> levels;
+  for (int ray = 0; ray < 120; ++ray) {
+    const double azimuth = kTwoPi * ray / 120;
+    for (double r = from_px; r <= to_px; r += 1.0) {
+      const ImagePoint at{circle.p[0] + r * std::cos(azimuth), circle.p[1] + r * std::sin(azimuth)};
+      if (at.u_px < 1 || at.v_px < 1 || at.u_px > grey.cols - 3 || at.v_px > grey.rows - 3) {
+        continue;
+      }
+      levels.push_back(level_at(grey, at));
+    }
+  }
+  if (levels.size() < 30) return std::nullopt;
+  return median(std::move(levels));
+}
+
+/// The mirror's edge among the circles: the largest with at least three quarters of the best
+/// support. Where that is the outer edge of a dark ring around the mirror, the ring's inner edge.
+const Candidate* mirror_edge(const cv::Mat& grey, const std::vector<Candidate>& circles) {
+  if (circles.empty()) return nullptr;
+  const double enough = std::max(0.45, 0.75 * circles.front().support.share);
+  const Candidate* outer = nullptr;
+  for (const Candidate& c : circles) {
+    if (c.support.share >= enough && (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
+      outer = &c;
+    }
+  }
+  if (outer == nullptr || outer->support.falling > 0.6) return outer;
+  const double r1 = outer->circle.p[2];
+  const Candidate* inner = nullptr;
+  for (const Candidate& c : circles) {
+    const double r2 = c.circle.p[2];
+    const double off =
+        std::hypot(c.circle.p[0] - outer->circle.p[0], c.circle.p[1] - outer->circle.p[1]);
+    if (r2 > 0.985 * r1 || r2 < 0.7 * r1 || off > 0.06 * r1 || c.support.falling < 0.6 ||
+        c.support.share < 0.8 * enough) {
+      continue;
+    }
+    const double margin = std::min(2.0, 0.25 * (r1 - r2));
+    const auto ring = level_between(grey, c.circle, r2 + margin, r1 - margin - off);
+    const auto inside = level_between(grey, c.circle, 0.85 * r2, 0.97 * r2);
+    if (!ring || !inside || *ring > 0.7 * *inside) continue;
+    if (inner == nullptr || r2 > inner->circle.p[2]) inner = &c;
+  }
+  return inner != nullptr ? inner : outer;
+}
+
+cv::Mat grey_of(const cv::Mat& bgr) {
+  cv::Mat grey;
+  if (bgr.channels() == 3) {
+    cv::cvtColor(bgr, grey, cv::COLOR_BGR2GRAY);
+  } else {
+    grey = bgr;
+  }
+  grey.convertTo(grey, CV_32F);
+  return grey;
+}
+
+struct Refined {
+  EllipseFit fit;
+  double seen = 0.0;
+};
+
+/// Sub-pixel edges about `start`, window narrowing, and their ellipse.
+std::optional<Refined> refine(const cv::Mat& grey,
+                              Ellipse start,
+                              double first_reach_px,
+                              double noise) {
+  constexpr int kRays = 720;
+  std::optional<EllipseFit> fit;
+  int on_curve = 0;
+  for (const double reach : {first_reach_px, std::min(first_reach_px, 3.0), 2.0}) {
+    const std::vector<EdgePoint> edges = edges_near(grey, start, reach, kRays, 2.0 * noise);
+    if (edges.size() < kRays / 4) return std::nullopt;
+    std::vector<ImagePoint> points;
+    points.reserve(edges.size());
+    for (const EdgePoint& e : edges) points.push_back(e.at);
+    fit = fit_ellipse(points, start, {0.003});
+    if (!fit) return std::nullopt;
+    start = fit->ellipse;
+    on_curve = 0;
+    for (const double w : fit->weight) on_curve += w > 0.3 ? 1 : 0;
+  }
+  return Refined{*fit, on_curve / double{kRays}};
+}
+
+/// What edges alone do not show: a scene brighter on one side pulls the blurred edge its way. The
+/// deviation of the centre from it, measured on rendered frames (tests/bench/rim_bench).
+constexpr double kSharedErrorPx = 0.03;
+
+ObservedPoint observed(const EllipseFit& fit) {
+  const double extra = kSharedErrorPx * kSharedErrorPx;
+  return {fit.ellipse.centre(),
+          {fit.cov_px2(0, 0) + extra, fit.cov_px2(0, 1), fit.cov_px2(1, 1) + extra}};
+}
+
+/// The camera's own reflection: the best drawn small circle near the rim's centre that gets
+/// brighter outwards.
+void find_reflection(const cv::Mat& grey, Rim& rim) {
+  const double r = rim.ellipse.a_px;
+  const RadialEdges edges = radial_edges(grey, rim.centre.at, 120, 6);
+  const double within = std::max(0.8, 0.006 * r);
+  std::vector<Candidate> circles =
+      circles_in(edges, {std::max(3.0, 0.03 * r), 0.3 * r}, within, 1.0);
+  const Candidate* best = nullptr;
+  for (const Candidate& c : circles) {
+    const double off =
+        std::hypot(c.circle.p[0] - rim.centre.at.u_px, c.circle.p[1] - rim.centre.at.v_px);
+    if (off > 0.1 * r || c.support.share < 0.7 || c.support.falling > 0.2) continue;
+    if (best == nullptr || c.support.share > best->support.share) best = &c;
+  }
+  if (best == nullptr) return;
+  const auto fine = refine(grey, best->circle, 2.0, edges.noise);
+  if (!fine || fine->seen < 0.5) return;
+  rim.reflection = observed(fine->fit);
+  rim.reflection_radius_px = fine->fit.ellipse.mean_radius_px();
+}
+
+}  // namespace
+
+std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
+  cv::Mat grey = grey_of(bgr);
+  if (grey.cols < 64 || grey.rows < 64) return std::nullopt;
+  // The search works on about 320 x 240; the ellipse is then fitted at full size.
+  cv::Mat small = grey;
+  double scale = 1.0;
+  const int longest = std::max(grey.cols, grey.rows);
+  if (longest > 480) {
+    scale = longest / 400.0;
+    cv::resize(grey, small, {}, 1.0 / scale, 1.0 / scale, cv::INTER_AREA);
+  }
+  const double scale_u = grey.cols / static_cast<double>(small.cols);
+  const double scale_v = grey.rows / static_cast<double>(small.rows);
+  cv::GaussianBlur(small, small, {}, 1.0);
+  const ImagePoint middle{0.5 * (small.cols - 1), 0.5 * (small.rows - 1)};
+  const RadialEdges edges = radial_edges(small, middle, 180, 8);
+  const double shorter = std::min(small.cols, small.rows);
+  RadiusRange radius{0.2 * shorter, 0.75 * shorter};
+  if (search.radius_px) {
+    const double slack = std::max(4.0 * search.radius_px->sd, 0.12 * search.radius_px->value);
+    radius = {(search.radius_px->value - slack) / scale_u,
+              (search.radius_px->value + slack) / scale_u};
+  }
+  constexpr double kWithinPx = 1.3;
+  const std::vector<Candidate> circles = circles_in(edges, radius, kWithinPx, 0.5);
+  const Candidate* edge = mirror_edge(small, circles);
+  if (edge == nullptr) return std::nullopt;
+
+  Ellipse start = edge->circle;
+  start.p[0] = (start.p[0] + 0.5) * scale_u - 0.5;
+  start.p[1] = (start.p[1] + 0.5) * scale_v - 0.5;
+  start.p[2] *= scale_u;
+  start.p[3] *= scale_v;
+  cv::Mat smooth;
+  cv::GaussianBlur(grey, smooth, {}, 0.7);
+  const auto fine = refine(smooth, start, 4.0 * scale, edges.noise / scale);
+  if (!fine) return std::nullopt;
+  Rim rim;
+  rim.centre = observed(fine->fit);
+  rim.ellipse = fine->fit.ellipse.axes();
+  rim.radius_sd_px = 0.5 * std::sqrt(fine->fit.cov_px2(2, 2) + fine->fit.cov_px2(3, 3) +
+                                     2.0 * fine->fit.cov_px2(2, 3));
+  rim.edge_noise_px = fine->fit.noise_px;
+  rim.seen = fine->seen;
+  find_reflection(smooth, rim);
+  return rim;
+}
+
+}  // namespace rondel::vision
