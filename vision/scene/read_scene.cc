@@ -26,7 +26,10 @@ constexpr double kMm = 1e-3;
 constexpr std::size_t kMostObjects = 64;
 
 /// Sets `target` to `scale` times the number at `key`, where there is one.
-void read(const YamlMap& map, std::string_view key, const Limits& limits, double& target,
+void read(const YamlMap& map,
+          std::string_view key,
+          const Limits& limits,
+          double& target,
           double scale = 1.0) {
   if (const auto value = map.number(key, limits)) target = scale * *value;
 }
@@ -36,7 +39,10 @@ void read(const YamlMap& map, std::string_view key, bool& target) {
 }
 
 /// A number that has to be there.
-void need(const YamlMap& map, std::string_view key, const Limits& limits, double& target,
+void need(const YamlMap& map,
+          std::string_view key,
+          const Limits& limits,
+          double& target,
           double scale = 1.0) {
   if (map.require(key, text_of(limits))) read(map, key, limits, target, scale);
 }
@@ -46,8 +52,8 @@ void read_colour(const YamlMap& map, std::string_view key, Vec3& target) {
   const auto text = map.text(key);
   if (!text) return;
   const std::string digits = text->front() == '#' ? text->substr(1) : *text;
-  const bool right = digits.size() == 6 &&
-                     digits.find_first_not_of("0123456789abcdefABCDEF") == std::string::npos;
+  const bool right =
+      digits.size() == 6 && digits.find_first_not_of("0123456789abcdefABCDEF") == std::string::npos;
   if (!right) {
     map.complain(key, "must be six hex digits, rrggbb, in quotes when they are all decimal");
     return;
@@ -56,7 +62,9 @@ void read_colour(const YamlMap& map, std::string_view key, Vec3& target) {
   target = srgb(part(0), part(2), part(4));
 }
 
-void read_material(const YamlMap& map, std::string_view colour, std::string_view gloss,
+void read_material(const YamlMap& map,
+                   std::string_view colour,
+                   std::string_view gloss,
                    Material& material) {
   read_colour(map, colour, material.albedo);
   read(map, gloss, kShare, material.gloss);
@@ -90,7 +98,12 @@ void read_span(const YamlMap& map, FloorPoint& from, FloorPoint& to) {
 }
 
 void read_rig(const YamlMap& map, SceneRig& rig) {
-  map.allow({"width_px", "height_px", "focal_px", "principal_du_px", "principal_dv_px", "mirror",
+  map.allow({"width_px",
+             "height_px",
+             "focal_px",
+             "principal_du_px",
+             "principal_dv_px",
+             "mirror",
              "mounting"});
   if (const auto width = map.whole("width_px", 16, 8192)) rig.width_px = *width;
   if (const auto height = map.whole("height_px", 16, 8192)) rig.height_px = *height;
@@ -98,8 +111,16 @@ void read_rig(const YamlMap& map, SceneRig& rig) {
   read(map, "principal_du_px", {-1000.0, 1000.0, false}, rig.principal_du_px);
   read(map, "principal_dv_px", {-1000.0, 1000.0, false}, rig.principal_dv_px);
   if (const auto mirror = map.map("mirror")) {
-    mirror->allow({"shape", "vertex_radius_mm", "conic_constant", "slope_deg", "rim_radius_mm",
-                   "distance_mm", "tilt_x_deg", "tilt_y_deg", "shift_x_mm", "shift_y_mm"});
+    mirror->allow({"shape",
+                   "vertex_radius_mm",
+                   "conic_constant",
+                   "slope_deg",
+                   "rim_radius_mm",
+                   "distance_mm",
+                   "tilt_x_deg",
+                   "tilt_y_deg",
+                   "shift_x_mm",
+                   "shift_y_mm"});
     if (const auto shape = mirror->word("shape", {"conic", "cone"})) {
       rig.kind = *shape == 0 ? MirrorKind::conic : MirrorKind::cone;
     }
@@ -129,10 +150,23 @@ void read_rig(const YamlMap& map, SceneRig& rig) {
 }
 
 void read_robot(const YamlMap& map, Robot& robot) {
-  map.allow({"plate_radius_mm", "plate_below_eye_mm", "plate_thickness_mm", "body_radius_mm",
-             "plate_colour", "plate_gloss", "posts", "post_colour", "post_gloss", "parts",
-             "holder_radius_mm", "holder_colour", "holder_gloss", "camera_radius_mm",
-             "camera_board_mm", "board_colour", "board_gloss"});
+  map.allow({"plate_radius_mm",
+             "plate_below_eye_mm",
+             "plate_thickness_mm",
+             "body_radius_mm",
+             "plate_colour",
+             "plate_gloss",
+             "posts",
+             "post_colour",
+             "post_gloss",
+             "parts",
+             "holder_radius_mm",
+             "holder_colour",
+             "holder_gloss",
+             "camera_radius_mm",
+             "camera_board_mm",
+             "board_colour",
+             "board_gloss"});
   read(map, "plate_radius_mm", kSizeMm, robot.plate_radius_m, kMm);
   read(map, "plate_below_eye_mm", kSizeMm, robot.plate_below_eye_m, kMm);
   read(map, "plate_thickness_mm", kSizeMm, robot.plate_thickness_m, kMm);
@@ -154,8 +188,8 @@ void read_robot(const YamlMap& map, Robot& robot) {
     robot.posts.push_back(post);
   });
   for_each(map, "parts", [&](const std::string&, const YamlMap& entry) {
-    entry.allow({"x_m", "y_m", "turn_deg", "length_mm", "width_mm", "height_mm", "colour",
-                 "gloss"});
+    entry.allow(
+        {"x_m", "y_m", "turn_deg", "length_mm", "width_mm", "height_mm", "colour", "gloss"});
     RobotPart part;
     read_place(entry, part.at);
     read(entry, "turn_deg", kTurn, part.turn_rad, kRadPerDeg);
@@ -168,8 +202,16 @@ void read_robot(const YamlMap& map, Robot& robot) {
 }
 
 void read_sensor(const YamlMap& map, Sensor& sensor) {
-  map.allow({"supersample", "vignetting", "defocus_px", "glare", "full_well_e", "read_noise_e",
-             "bayer", "jpeg_quality", "rgb565", "mirror_reflectance"});
+  map.allow({"supersample",
+             "vignetting",
+             "defocus_px",
+             "glare",
+             "full_well_e",
+             "read_noise_e",
+             "bayer",
+             "jpeg_quality",
+             "rgb565",
+             "mirror_reflectance"});
   if (const auto rays = map.whole("supersample", 1, 16)) sensor.supersample = *rays;
   read(map, "vignetting", kShare, sensor.vignetting);
   read(map, "defocus_px", {0.0, 20.0, false}, sensor.defocus_px);
@@ -231,8 +273,8 @@ void read_floor(const YamlMap& map, Floor& floor) {
 }
 
 void read_hall(const YamlMap& map, Hall& hall) {
-  map.allow({"span_m", "height_m", "wall_colour", "ceiling_colour", "skirting_colour",
-             "skirting_mm"});
+  map.allow(
+      {"span_m", "height_m", "wall_colour", "ceiling_colour", "skirting_colour", "skirting_mm"});
   if (map.has("span_m")) {
     FloorPoint a = hall.low;
     FloorPoint b = hall.high;
@@ -248,8 +290,17 @@ void read_hall(const YamlMap& map, Hall& hall) {
 }
 
 SceneObject read_object(const std::string& id, const YamlMap& map) {
-  map.allow({"name", "solid", "x_m", "y_m", "turn_deg", "diameter_mm", "length_mm", "width_mm",
-             "height_mm", "colour", "gloss"});
+  map.allow({"name",
+             "solid",
+             "x_m",
+             "y_m",
+             "turn_deg",
+             "diameter_mm",
+             "length_mm",
+             "width_mm",
+             "height_mm",
+             "colour",
+             "gloss"});
   SceneObject object;
   object.id = id;
   if (const auto name = map.text("name")) object.name = *name;
@@ -274,8 +325,15 @@ SceneObject read_object(const std::string& id, const YamlMap& map) {
 }
 
 Light read_light(const std::string& name, const YamlMap& map) {
-  map.allow({"lamps", "windows", "ambient_lux", "ambient_kelvin", "exposure_lux", "stops",
-             "white_kelvin", "white_error_red", "white_error_blue"});
+  map.allow({"lamps",
+             "windows",
+             "ambient_lux",
+             "ambient_kelvin",
+             "exposure_lux",
+             "stops",
+             "white_kelvin",
+             "white_error_red",
+             "white_error_blue"});
   Light light;
   light.name = name;
   read(map, "ambient_lux", kLux, light.ambient_lux);
@@ -347,8 +405,8 @@ SceneFrame read_frame(const std::string& image, const YamlMap& map, const Scene&
     const auto entry = moves->map(id);
     if (!entry) continue;
     entry->allow({"x_m", "y_m", "turn_deg", "away"});
-    Move move{static_cast<std::size_t>(found - scene.objects.begin()), found->at, found->turn_rad,
-              false};
+    Move move{
+        static_cast<std::size_t>(found - scene.objects.begin()), found->at, found->turn_rad, false};
     read(*entry, "x_m", kAnywhere, move.at.x_m);
     read(*entry, "y_m", kAnywhere, move.at.y_m);
     read(*entry, "turn_deg", kTurn, move.turn_rad, kRadPerDeg);
@@ -363,8 +421,18 @@ SceneFrame read_frame(const std::string& image, const YamlMap& map, const Scene&
 Scene parse_scene(const std::string& text, const std::string& file) {
   std::vector<Problem> problems;
   const YamlMap map(text, file, problems);
-  map.allow({"name", "seed", "rig", "robot", "sensor", "floor", "hall", "walls", "objects",
-             "lights", "frames", "survey"});
+  map.allow({"name",
+             "seed",
+             "rig",
+             "robot",
+             "sensor",
+             "floor",
+             "hall",
+             "walls",
+             "objects",
+             "lights",
+             "frames",
+             "survey"});
   Scene scene;
   if (const auto name = map.text("name")) scene.name = *name;
   if (const auto seed = map.whole("seed", 0, 1'000'000'000)) {
@@ -402,8 +470,8 @@ Scene parse_scene(const std::string& text, const std::string& file) {
     });
   }
   if (const auto survey = map.map("survey")) {
-    survey->allow({"seed", "mark_px", "tape_mm", "floor_marks", "object_marks", "nearest_m",
-                   "farthest_m"});
+    survey->allow(
+        {"seed", "mark_px", "tape_mm", "floor_marks", "object_marks", "nearest_m", "farthest_m"});
     Survey plan;
     if (const auto seed = survey->whole("seed", 0, 1'000'000'000)) {
       plan.seed = static_cast<std::uint64_t>(*seed);

@@ -132,7 +132,9 @@ class Tracer {
       *last_floor = sight.at;
     }
     if (sight.face == 0 || kept->surface != key) {
-      kept->light = world_.irradiance(sight.at, sight.normal, sight.solid);
+      // What stands on the floor shades floor and things, not the hall's walls and ceiling.
+      const bool shadows = sight.surface == 0 || sight.solid >= 0;
+      kept->light = world_.irradiance(sight.at, sight.normal, sight.solid, shadows);
       kept->shine = world_.highlight(sight.at, sight.normal, towards, gloss);
       if (sight.surface == 0 && gloss > 0.0) {
         kept->shine += sheen(sight, towards, gloss);
@@ -145,14 +147,15 @@ class Tracer {
   /// What a polished floor reflects at a flat angle (Schlick 1994).
   Vec3 sheen(const Sight& sight, Vec3 towards, double gloss) const {
     const Vec3 away = towards - 2.0 * dot(towards, sight.normal) * sight.normal;
-    const double grazing = std::pow(1.0 - std::max(0.0, dot(away, sight.normal)), 5.0);
+    const double flat = 1.0 - std::max(0.0, dot(away, sight.normal));
+    const double grazing = flat * flat * flat * flat * flat;
     const double share = gloss * (0.03 + 0.6 * grazing);
     const Vec3 from = sight.at + 1e-6 * sight.normal;
     const Sight far = world_.look(from, away);
     Vec3 seen = world_.emission(from, away, far);
     if (seen.y <= 0.0) {
       seen = world_.exposure() * world_.albedo(far, 1.0) *
-             world_.irradiance(far.at, far.normal, far.solid);
+             world_.irradiance(far.at, far.normal, far.solid, false);
     }
     return share * seen;
   }

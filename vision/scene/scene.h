@@ -183,8 +183,8 @@ struct SceneFrame {
 /// What a person with a tape and a mouse would write down about the frames (survey.h).
 struct Survey {
   std::uint64_t seed = 1;
-  double mark_px = 0.5;    ///< standard deviation of a click, along u and v
-  double tape_m = 0.003;   ///< standard deviation of a measured place, along x and y
+  double mark_px = 0.5;   ///< standard deviation of a click, along u and v
+  double tape_m = 0.003;  ///< standard deviation of a measured place, along x and y
   int floor_marks = 4;
   int object_marks = 4;
   double nearest_m = 0.25;  ///< of marks

@@ -42,7 +42,9 @@ bool stands_free(const ObjectTruth& seen, const Survey& plan) {
          seen.at.has_value();
 }
 
-std::string mark_row(const std::string& image, ImagePoint at, const std::string& object,
+std::string mark_row(const std::string& image,
+                     ImagePoint at,
+                     const std::string& object,
                      FloorSpot spot) {
   return fmt::format("{},{:.1f},{:.1f},{},{:.3f},{:.1f}\n",
                      image,
@@ -53,7 +55,9 @@ std::string mark_row(const std::string& image, ImagePoint at, const std::string&
                      spot.bearing_rad * kDegPerRad);
 }
 
-std::string floor_mark(const Scene& scene, const std::vector<FrameTruth>& truths, int index,
+std::string floor_mark(const Scene& scene,
+                       const std::vector<FrameTruth>& truths,
+                       int index,
                        Hand& hand) {
   const Survey& plan = *scene.survey;
   // Evenly over the image: far marks closer together than by range.
@@ -61,10 +65,9 @@ std::string floor_mark(const Scene& scene, const std::vector<FrameTruth>& truths
   for (int attempt = 0; attempt < 500; ++attempt) {
     const FrameTruth& truth = truths[static_cast<std::size_t>(
         hand.between(0.0, static_cast<double>(truths.size()) - 1e-9))];
-    const double range =
-        1.0 / ((1.0 - share) / plan.nearest_m + share / plan.farthest_m) + hand.between(-0.02, 0.02);
-    const FloorSpot spot{range,
-                         wrap_angle(2.399963 * index + hand.between(-0.4, 0.4))};
+    const double range = 1.0 / ((1.0 - share) / plan.nearest_m + share / plan.farthest_m) +
+                         hand.between(-0.02, 0.02);
+    const FloorSpot spot{range, wrap_angle(2.399963 * index + hand.between(-0.4, 0.4))};
     const auto at = pixel_of(scene.rig, spot);
     if (!at) continue;
     const int u = static_cast<int>(std::lround(at->u_px));
@@ -99,20 +102,34 @@ Deep deepest(const cv::Mat& region) {
   return deep;
 }
 
-std::string disc_row(const std::string& image, const std::string& label, const Deep& deep,
+std::string disc_row(const std::string& image,
+                     const std::string& label,
+                     const Deep& deep,
                      double share) {
-  return fmt::format("{},{},disc,{} {} {:.1f}\n", image, label, deep.at.x, deep.at.y,
+  return fmt::format("{},{},disc,{} {} {:.1f}\n",
+                     image,
+                     label,
+                     deep.at.x,
+                     deep.at.y,
                      std::max(1.0, share * deep.radius));
 }
 
-std::string box_row(const std::string& image, const std::string& label, const Deep& deep,
+std::string box_row(const std::string& image,
+                    const std::string& label,
+                    const Deep& deep,
                     double share) {
   const int half = std::max(1, static_cast<int>(share * deep.radius / std::sqrt(2.0)));
-  return fmt::format("{},{},box,{} {} {} {}\n", image, label, deep.at.x - half, deep.at.y - half,
-                     deep.at.x + half, deep.at.y + half);
+  return fmt::format("{},{},box,{} {} {} {}\n",
+                     image,
+                     label,
+                     deep.at.x - half,
+                     deep.at.y - half,
+                     deep.at.x + half,
+                     deep.at.y + half);
 }
 
-std::string swatches_of_objects(const Scene& scene, const std::vector<FrameTruth>& truths,
+std::string swatches_of_objects(const Scene& scene,
+                                const std::vector<FrameTruth>& truths,
                                 std::size_t light) {
   std::set<std::string> names;
   for (const SceneObject& object : scene.objects) {
@@ -139,18 +156,20 @@ std::string swatches_of_objects(const Scene& scene, const std::vector<FrameTruth
     // Near, middling and far.
     const std::size_t count = std::min<std::size_t>(4, sightings.size());
     for (std::size_t k = 0; k < count; ++k) {
-      const Sighting& pick = sightings[k * (sightings.size() - 1) / std::max<std::size_t>(1, count - 1)];
+      const Sighting& pick =
+          sightings[k * (sightings.size() - 1) / std::max<std::size_t>(1, count - 1)];
       const FrameTruth& truth = truths[pick.frame];
       const Deep deep = deepest(truth.objects == static_cast<double>(pick.object + 1));
       const bool round = scene.objects[pick.object].solid == Solid::ball;
-      rows += round ? disc_row(truth.image, name, deep, 0.85)
-                    : box_row(truth.image, name, deep, 0.9);
+      rows +=
+          round ? disc_row(truth.image, name, deep, 0.85) : box_row(truth.image, name, deep, 0.9);
     }
   }
   return rows;
 }
 
-std::string swatches_of_surroundings(const Scene& scene, const std::vector<FrameTruth>& truths,
+std::string swatches_of_surroundings(const Scene& scene,
+                                     const std::vector<FrameTruth>& truths,
                                      std::size_t light) {
   std::string rows;
   int frames = 0;
@@ -203,12 +222,15 @@ Sheets survey(const Scene& scene, const std::vector<FrameTruth>& truths) {
   std::stable_sort(balls.begin(), balls.end(), [](const Candidate& a, const Candidate& b) {
     return a.seen->spot.range_m < b.seen->spot.range_m;
   });
-  const auto count = std::min<std::size_t>(static_cast<std::size_t>(plan.object_marks), balls.size());
+  const auto count =
+      std::min<std::size_t>(static_cast<std::size_t>(plan.object_marks), balls.size());
   for (std::size_t k = 0; k < count; ++k) {
     // The middles of equal shares of the candidates, near to far.
     const Candidate& pick = balls[(2 * k + 1) * balls.size() / (2 * count)];
-    sheets.marks_csv += mark_row(truths[pick.frame].image, hand.click(*pick.seen->at),
-                                 pick.seen->name, hand.measure(pick.seen->spot));
+    sheets.marks_csv += mark_row(truths[pick.frame].image,
+                                 hand.click(*pick.seen->at),
+                                 pick.seen->name,
+                                 hand.measure(pick.seen->spot));
   }
 
   sheets.swatches_csv = "image,label,shape,points\n";

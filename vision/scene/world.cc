@@ -1,9 +1,12 @@
 #include "vision/scene/world.h"
 
 #include <algorithm>
+#include <array>
 #include <cassert>
 #include <cmath>
 #include <numbers>
+#include <type_traits>
+#include <utility>
 
 #include "vision/scene/light_colour.h"
 #include "vision/scene/noise.h"
@@ -39,23 +42,6 @@ double grain(std::uint64_t seed, double x, double y) {
   return (1.0 - sy) * low + sy * high;
 }
 
-bool on_lane(const Lane& lane, double x, double y) {
-  const double reach2 = 0.25 * lane.width_m * lane.width_m;
-  for (std::size_t k = 1; k < lane.points.size(); ++k) {
-    const FloorPoint a = lane.points[k - 1];
-    const FloorPoint b = lane.points[k];
-    const double ex = b.x_m - a.x_m;
-    const double ey = b.y_m - a.y_m;
-    const double px = x - a.x_m;
-    const double py = y - a.y_m;
-    const double along = std::clamp((px * ex + py * ey) / (ex * ex + ey * ey), 0.0, 1.0);
-    const double ox = px - along * ex;
-    const double oy = py - along * ey;
-    if (ox * ox + oy * oy <= reach2) return true;
-  }
-  return false;
-}
-
 /// How much of a round light of angular radius `light` a round thing of angular radius `thing`
 /// leaves, `apart` from it (all rad, small).
 double uncovered(double apart, double thing, double light) {
@@ -68,19 +54,56 @@ double uncovered(double apart, double thing, double light) {
   return 1.0 - most * t * t * (3.0 - 2.0 * t);
 }
 
+/// Twelve places evenly over the unit disc: how much of a round light a thing leaves.
+const std::array<std::pair<double, double>, 12> kSunflower = [] {
+  std::array<std::pair<double, double>, 12> points;
+  for (std::size_t k = 0; k < points.size(); ++k) {
+    const double r = std::sqrt((static_cast<double>(k) + 0.5) / points.size());
+    const double turn = 2.399963229728653 * static_cast<double>(k);
+    points[k] = {r * std::cos(turn), r * std::sin(turn)};
+  }
+  return points;
+}();
+
+/// The hypotenuse; std::hypot guards against overflow at ten times the cost.
+double size(double a, double b) { return std::sqrt(a * a + b * b); }
+
+/// Distance on the floor from a thing's footprint, 0 inside.
+double distance_from(const Can& can, Vec3 at) {
+  return std::max(0.0, size(at.x - can.foot.x, at.y - can.foot.y) - can.radius);
+}
+double distance_from(const Block& block, Vec3 at) {
+  const double wx = at.x - block.foot.x;
+  const double wy = at.y - block.foot.y;
+  const double lx = std::abs(block.cos_turn * wx + block.sin_turn * wy);
+  const double ly = std::abs(-block.sin_turn * wx + block.cos_turn * wy);
+  return size(std::max(0.0, lx - block.half_length), std::max(0.0, ly - block.half_width));
+}
+
 Block board(const Wall& wall) {
   const double dx = wall.to.x_m - wall.from.x_m;
   const double dy = wall.to.y_m - wall.from.y_m;
-  const double size = std::hypot(dx, dy);
+  const double run = size(dx, dy);
   return {{0.5 * (wall.from.x_m + wall.to.x_m), 0.5 * (wall.from.y_m + wall.to.y_m), wall.lift_m},
-          0.5 * size,
+          0.5 * run,
           0.5 * wall.thickness_m,
           wall.height_m,
-          dx / size,
-          dy / size};
+          dx / run,
+          dy / run};
 }
 
 }  // namespace
+
+bool World::Stroke::covers(double x, double y) const {
+  const double px = x - at.x_m;
+  const double py = y - at.y_m;
+  const double off = px * along_y - py * along_x;
+  if (off * off > half_width_m * half_width_m) return false;
+  const double along = std::clamp(px * along_x + py * along_y, 0.0, length_m);
+  const double ox = px - along * along_x;
+  const double oy = py - along * along_y;
+  return ox * ox + oy * oy <= half_width_m * half_width_m;
+}
 
 World::World(const Scene& scene, const SceneFrame& frame)
     : scene_{scene}, objects_{scene.objects}, away_(scene.objects.size(), false) {
@@ -121,6 +144,17 @@ World::World(const Scene& scene, const SceneFrame& frame)
   }
   for (Thing& thing : solids_) {
     thing.bound = std::visit([](const auto& shape) { return around(shape); }, thing.shape);
+  }
+
+  for (const Lane& lane : scene.floor.lanes) {
+    for (std::size_t k = 1; k < lane.points.size(); ++k) {
+      const FloorPoint a = lane.points[k - 1];
+      const double dx = lane.points[k].x_m - a.x_m;
+      const double dy = lane.points[k].y_m - a.y_m;
+      const double run = size(dx, dy);
+      if (run == 0.0) continue;
+      strokes_.push_back({a, dx / run, dy / run, run, 0.5 * lane.width_m, lane.albedo});
+    }
   }
 
   robot_ = {{frame.pose.x_m, frame.pose.y_m, 0.0},
@@ -262,8 +296,16 @@ double World::lit(Vec3 at, const Source& source, int own_solid) const {
   const double d = length(v);
   const Vec3 to = (1.0 / d) * v;
   const double light = source.radius / d;
+  const double lowest = v.z - source.radius;
+  const double level = size(v.x, v.y) + source.radius;
   double left = 1.0;
-  const auto shade = [&](const Ball& bound, auto blocked, bool is_ball) {
+  // Lines to the light are below the height of a thing only this near, seen from above.
+  const auto too_far = [&](const auto& shape) {
+    const double above = shape.foot.z + shape.height - at.z;
+    if (above <= 0.0) return true;
+    return lowest > above && distance_from(shape, at) * lowest > above * level;
+  };
+  const auto shade = [&](const Ball& bound, const auto& shape) {
     const Vec3 w = bound.centre - at;
     const double ahead = dot(w, to);
     if (ahead <= 0.0 || ahead > d + bound.radius) return;
@@ -271,50 +313,32 @@ double World::lit(Vec3 at, const Source& source, int own_solid) const {
     // Off the line by more than the thing and the light's own cone: no shadow.
     const double room = bound.radius + ahead * light;
     if (far2 - ahead * ahead >= room * room) return;
-    const double far = std::sqrt(far2);
-    if (is_ball) {
+    if constexpr (std::is_same_v<std::decay_t<decltype(shape)>, Ball>) {
+      const double far = std::sqrt(far2);
       const double apart = std::acos(std::clamp(ahead / far, -1.0, 1.0));
       const double thing = std::asin(std::clamp(bound.radius / far, 0.0, 1.0));
       left *= uncovered(apart, thing, std::max(light, 1e-4));
-      return;
+    } else {
+      if (too_far(shape)) return;
+      const Vec3 lifted = at + 1e-6 * to;
+      const Vec3 side = unit(std::abs(to.z) < 0.9 ? cross(to, kUp) : cross(to, {1.0, 0.0, 0.0}));
+      const Vec3 up = cross(side, to);
+      int open = 0;
+      for (const auto& [across, upwards] : kSunflower) {
+        Meeting meeting;
+        meeting.t = d;
+        const Vec3 aim = v + source.radius * across * side + source.radius * upwards * up;
+        if (!meet(shape, lifted, unit(aim), meeting)) ++open;
+      }
+      left *= static_cast<double>(open) / static_cast<double>(kSunflower.size());
     }
-    // Twelve points over the light (a sunflower), exactly.
-    const Vec3 side = unit(std::abs(to.z) < 0.9 ? cross(to, kUp) : cross(to, {1.0, 0.0, 0.0}));
-    const Vec3 up = cross(side, to);
-    constexpr int kPoints = 12;
-    int open = 0;
-    for (int k = 0; k < kPoints; ++k) {
-      const double r = source.radius * std::sqrt((k + 0.5) / kPoints);
-      const double turn = 2.399963229728653 * k;
-      const Vec3 aim = v + r * std::cos(turn) * side + r * std::sin(turn) * up;
-      if (!blocked(unit(aim))) ++open;
-    }
-    left *= static_cast<double>(open) / kPoints;
   };
-  const Vec3 lifted = at + 1e-6 * to;
   for (std::size_t k = 0; k < solids_.size() && left > 0.0; ++k) {
     if (static_cast<int>(k) == own_solid) continue;
     const Thing& thing = solids_[k];
-    shade(
-        thing.bound,
-        [&](Vec3 aim) {
-          Meeting meeting;
-          meeting.t = d;
-          return std::visit([&](const auto& shape) { return meet(shape, lifted, aim, meeting); },
-                            thing.shape);
-        },
-        std::holds_alternative<Ball>(thing.shape));
+    std::visit([&](const auto& shape) { shade(thing.bound, shape); }, thing.shape);
   }
-  if (own_solid != -2) {
-    shade(
-        around(robot_),
-        [&](Vec3 aim) {
-          Meeting meeting;
-          meeting.t = d;
-          return meet(robot_, lifted, aim, meeting);
-        },
-        false);
-  }
+  if (own_solid != -2) shade(around(robot_), robot_);
   return left;
 }
 
@@ -325,7 +349,7 @@ double World::open_sky(Vec3 at, Vec3 normal, int own_solid) const {
   const auto upright = [&](double x, double half_width, double h) {
     const double near = std::max(x, 1e-4);
     const double hidden =
-        0.5 * (1.0 - near / std::hypot(near, h)) * (2.0 / kPi) * std::atan2(half_width, near);
+        0.5 * (1.0 - near / size(near, h)) * (2.0 / kPi) * std::atan2(half_width, near);
     open *= 1.0 - hidden;
   };
   for (std::size_t k = 0; k < solids_.size(); ++k) {
@@ -342,29 +366,22 @@ double World::open_sky(Vec3 at, Vec3 normal, int own_solid) const {
       open *= 1.0 - std::max(0.0, up) * r2 / (d * d);
     } else if (normal.z > 0.5) {
       if (const auto* can = std::get_if<Can>(&thing.shape)) {
-        const double x = std::hypot(at.x - can->foot.x, at.y - can->foot.y) - can->radius;
-        upright(x, can->radius, can->height + can->foot.z - at.z);
+        upright(distance_from(*can, at), can->radius, can->height + can->foot.z - at.z);
       } else {
         const Block& block = std::get<Block>(thing.shape);
-        const double wx = at.x - block.foot.x;
-        const double wy = at.y - block.foot.y;
-        const double lx = std::abs(block.cos_turn * wx + block.sin_turn * wy);
-        const double ly = std::abs(-block.sin_turn * wx + block.cos_turn * wy);
-        const double x =
-            std::hypot(std::max(0.0, lx - block.half_length), std::max(0.0, ly - block.half_width));
-        upright(
-            x, std::max(block.half_length, block.half_width), block.height + block.foot.z - at.z);
+        upright(distance_from(block, at),
+                std::max(block.half_length, block.half_width),
+                block.height + block.foot.z - at.z);
       }
     }
   }
   if (own_solid != -2 && normal.z > 0.5) {
-    const double x = std::hypot(at.x - robot_.foot.x, at.y - robot_.foot.y) - robot_.radius;
-    upright(x, robot_.radius, robot_.height - at.z);
+    upright(distance_from(robot_, at), robot_.radius, robot_.height - at.z);
   }
   return open;
 }
 
-Vec3 World::irradiance(Vec3 at, Vec3 normal, int own_solid) const {
+Vec3 World::irradiance(Vec3 at, Vec3 normal, int own_solid, bool shadows) const {
   Vec3 sum;
   for (const Source& source : sources_) {
     const Vec3 v = source.at - at;
@@ -375,10 +392,11 @@ Vec3 World::irradiance(Vec3 at, Vec3 normal, int own_solid) const {
     const double facing = (dot(v, normal) / d + wrap) / (1.0 + wrap);
     const double from = -dot(v, source.axis) / d;
     if (facing <= 0.0 || from <= 0.0) continue;
-    sum += (lit(at, source, own_solid) * facing * from / d2) * source.intensity;
+    const double open = shadows ? lit(at, source, own_solid) : 1.0;
+    sum += (open * facing * from / d2) * source.intensity;
   }
   const double up = 0.5 + 0.5 * normal.z;
-  const double sky = open_sky(at, normal, own_solid);
+  const double sky = shadows ? open_sky(at, normal, own_solid) : 1.0;
   return sum + sky * (up * ambient_ + (1.0 - up) * (bounce_ + 0.3 * ambient_));
 }
 
@@ -386,6 +404,7 @@ Vec3 World::highlight(Vec3 at, Vec3 normal, Vec3 towards, double gloss) const {
   Vec3 sum;
   if (gloss <= 0.0) return sum;
   const double sharp = 30.0 + 90.0 * gloss;
+  const double least = std::pow(1e-4, 1.0 / sharp);
   for (const Source& source : sources_) {
     const Vec3 v = source.at - at;
     const double d2 = dot(v, v);
@@ -394,8 +413,9 @@ Vec3 World::highlight(Vec3 at, Vec3 normal, Vec3 towards, double gloss) const {
     const double from = -dot(v, source.axis) / d;
     if (facing <= 0.0 || from <= 0.0) continue;
     const Vec3 half = unit((1.0 / d) * v - towards);
-    const double lobe = std::pow(std::max(0.0, dot(half, normal)), sharp);
-    if (lobe < 1e-4) continue;
+    const double cosine = dot(half, normal);
+    if (cosine < least) continue;
+    const double lobe = std::pow(cosine, sharp);
     sum += (lobe * (sharp + 8.0) / 8.0 * facing * from / d2) * source.intensity;
   }
   return (0.06 * gloss * exposure_) * sum;
@@ -407,9 +427,9 @@ Vec3 World::floor_albedo(double x, double y, double footprint_m) const {
                    y < floor.mat_high.y_m;
   Vec3 albedo = mat ? floor.mat.albedo : floor.hall.albedo;
   double contrast = 1.0;
-  for (const Lane& lane : floor.lanes) {
-    if (on_lane(lane, x, y)) {
-      albedo = lane.albedo;
+  for (const Stroke& stroke : strokes_) {
+    if (stroke.covers(x, y)) {
+      albedo = stroke.albedo;
       contrast = 0.4;
     }
   }
@@ -418,7 +438,7 @@ Vec3 World::floor_albedo(double x, double y, double footprint_m) const {
     double period = floor.grain_m;
     for (int octave = 0; octave < 4; ++octave, period *= 5.0) {
       // A patch averages what is finer than itself.
-      const double weight = period / std::hypot(period, 1.5 * footprint_m);
+      const double weight = period / size(period, 1.5 * footprint_m);
       if (weight < 0.1) continue;
       sum +=
           weight * grain(scene_.seed + 17U * static_cast<unsigned>(octave), x / period, y / period);

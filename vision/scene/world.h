@@ -31,8 +31,9 @@ class World {
   /// Bit i set: the ray would meet the named object with `Scene::objects` index i, were it alone.
   [[nodiscard]] std::uint64_t named_ahead(Vec3 from, Vec3 towards) const;
 
-  /// Light arriving at a surface, lux in linear sRGB. `own_solid` casts no shadow on it.
-  [[nodiscard]] Vec3 irradiance(Vec3 at, Vec3 normal, int own_solid) const;
+  /// Light arriving at a surface, lux in linear sRGB. `own_solid` casts no shadow on it; without
+  /// `shadows` nothing does.
+  [[nodiscard]] Vec3 irradiance(Vec3 at, Vec3 normal, int own_solid, bool shadows = true) const;
   /// Highlights of the lamps, seen along `towards`; 1 is white under the camera's exposure.
   [[nodiscard]] Vec3 highlight(Vec3 at, Vec3 normal, Vec3 towards, double gloss) const;
   /// Reflectance at a place, of what `sight` shows. `footprint_m`: size of the ray's patch there.
@@ -66,6 +67,16 @@ class World {
     Vec3 intensity;
     double radius = 0.0;
   };
+  /// One straight piece of a lane, round at its ends.
+  struct Stroke {
+    FloorPoint at;
+    double along_x = 1.0;
+    double along_y = 0.0;
+    double length_m = 0.0;
+    double half_width_m = 0.0;
+    Vec3 albedo;
+    [[nodiscard]] bool covers(double x, double y) const;
+  };
   struct Pane {
     Vec3 corner, across, normal;  ///< unit across
     double width = 0.0;
@@ -87,6 +98,7 @@ class World {
   std::vector<SceneObject> objects_;  ///< where they stand in this frame
   std::vector<bool> away_;
   std::vector<Thing> solids_;
+  std::vector<Stroke> strokes_;
   std::vector<Source> sources_;
   std::vector<Pane> panes_;
   std::vector<Disc> discs_;
