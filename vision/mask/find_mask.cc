@@ -34,25 +34,30 @@ struct Ring {
   int rings = 0;
 };
 
+bool inside(int u, int v, ImagePoint centre, const RimEllipse& rim) {
+  // Pixels that the edge itself runs through belong to nobody.
+  constexpr double kEdgePx = 0.5;
+  const double c = std::cos(rim.angle_rad);
+  const double s = std::sin(rim.angle_rad);
+  const double du = u - centre.u_px;
+  const double dv = v - centre.v_px;
+  const double along = (c * du + s * dv) / (rim.a_px - kEdgePx);
+  const double across = (c * dv - s * du) / (rim.b_px - kEdgePx);
+  return along * along + across * across <= 1.0;
+}
+
 Ring ring_of(cv::Size size, ImagePoint centre, const RimEllipse& rim) {
   Ring ring;
   ring.size = size;
   ring.slot = cv::Mat(size, CV_32S, cv::Scalar(-1));
-  // Pixels that the edge itself runs through belong to nobody.
-  constexpr double kEdgePx = 0.5;
   const double width_px = std::max(2.5, rim.a_px / 40.0);
-  const double c = std::cos(rim.angle_rad);
-  const double s = std::sin(rim.angle_rad);
   for (int v = 0; v < size.height; ++v) {
     for (int u = 0; u < size.width; ++u) {
-      const double du = u - centre.u_px;
-      const double dv = v - centre.v_px;
-      const double along = (c * du + s * dv) / (rim.a_px - kEdgePx);
-      const double across = (c * dv - s * du) / (rim.b_px - kEdgePx);
-      if (along * along + across * across > 1.0) continue;
+      if (!inside(u, v, centre, rim)) continue;
       ring.slot.at<int>(v, u) = static_cast<int>(ring.index.size());
       ring.index.push_back(v * size.width + u);
-      ring.ring.push_back(static_cast<int>(std::hypot(du, dv) / width_px));
+      ring.ring.push_back(
+          static_cast<int>(std::hypot(u - centre.u_px, v - centre.v_px) / width_px));
       ring.rings = std::max(ring.rings, ring.ring.back() + 1);
     }
   }
@@ -435,6 +440,22 @@ MaskResult find_mask(std::span<const Frame> frames, ImagePoint centre, const Rim
   }
   result.refusal = MaskRefusal::none;
   return result;
+}
+
+void keep_inside(ImagePoint centre, const RimEllipse& rim, cv::Mat& mask) {
+  for (int v = 0; v < mask.rows; ++v) {
+    for (int u = 0; u < mask.cols; ++u) {
+      if (!inside(u, v, centre, rim)) mask.at<std::uint8_t>(v, u) = 0;
+    }
+  }
+}
+
+double visible_fraction(const cv::Mat& mask,
+                        ImagePoint centre,
+                        const std::optional<RimEllipse>& rim) {
+  cv::Mat all(mask.size(), CV_8U, cv::Scalar(255));
+  if (rim) keep_inside(centre, *rim, all);
+  return cv::countNonZero(mask & all) / static_cast<double>(std::max(1, cv::countNonZero(all)));
 }
 
 void draw_strokes(std::span<const Stroke> strokes, cv::Mat& mask) {

@@ -40,6 +40,14 @@ inline constexpr int kLeastMaskFrames = 4;
                                    ImagePoint centre,
                                    const RimEllipse& rim);
 
+/// Masks what lies outside the rim, and the pixels that its edge runs through.
+void keep_inside(ImagePoint centre, const RimEllipse& rim, cv::Mat& mask);
+
+/// Share of the area inside the rim (of the picture, where there is no rim) that the mask shows.
+[[nodiscard]] double visible_fraction(const cv::Mat& mask,
+                                      ImagePoint centre,
+                                      const std::optional<RimEllipse>& rim);
+
 /// Hand strokes over a mask, later ones over earlier ones.
 void draw_strokes(std::span<const Stroke> strokes, cv::Mat& mask);
 
