@@ -392,6 +392,13 @@ SceneFrame read_frame(const std::string& image, const YamlMap& map, const Scene&
   need(map, "x_m", kAnywhere, frame.pose.x_m);
   need(map, "y_m", kAnywhere, frame.pose.y_m);
   need(map, "heading_deg", kTurn, frame.pose.heading_rad, kRadPerDeg);
+  const Hall& hall = scene.hall;
+  if (frame.pose.x_m <= hall.low.x_m || frame.pose.x_m >= hall.high.x_m) {
+    map.complain("x_m", "the robot stands outside the hall");
+  }
+  if (frame.pose.y_m <= hall.low.y_m || frame.pose.y_m >= hall.high.y_m) {
+    map.complain("y_m", "the robot stands outside the hall");
+  }
   const auto moves = map.map("moves");
   if (!moves) return frame;
   for (const std::string& id : moves->keys()) {
@@ -440,6 +447,12 @@ Scene parse_scene(const std::string& text, const std::string& file) {
   }
   if (const auto rig = map.map("rig")) read_rig(*rig, scene.rig);
   if (const auto robot = map.map("robot")) read_robot(*robot, scene.robot);
+  if (scene.robot.plate_below_eye_m + scene.robot.plate_thickness_m >= scene.rig.eye_height_m) {
+    map.complain("robot",
+                 fmt::format("plate_below_eye_mm + plate_thickness_mm must be less than the eye's "
+                             "height of {:g} mm",
+                             1e3 * scene.rig.eye_height_m));
+  }
   if (const auto sensor = map.map("sensor")) read_sensor(*sensor, scene.sensor);
   if (const auto floor = map.map("floor")) read_floor(*floor, scene.floor);
   if (const auto hall = map.map("hall")) read_hall(*hall, scene.hall);

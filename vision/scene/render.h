@@ -3,6 +3,7 @@
 #include <opencv2/core.hpp>
 #include <optional>
 #include <string>
+#include <string_view>
 #include <vector>
 
 #include "calib/base/geometry.h"
@@ -84,7 +85,11 @@ struct RenderedFrame {
                              const Light& light,
                              std::uint64_t noise_seed);
 
-/// truth.json: `scene` and the truth of its frames, without the maps.
+/// Where a frame's map is kept beside truth.json: map_file("frames/noon/0001.jpg", "classes") is
+/// "frames/noon/0001-classes.png". The mask, the same in all frames, is "mask.png".
+[[nodiscard]] std::string map_file(const std::string& image, std::string_view what);
+
+/// truth.json: `scene` and the truth of its frames, the maps by the names of their files.
 [[nodiscard]] std::string truth_json(const Scene& scene, const std::vector<FrameTruth>& frames);
 
 }  // namespace rondel::scene

@@ -1,3 +1,5 @@
+#include <fmt/format.h>
+
 #include <cmath>
 #include <nlohmann/json.hpp>
 
@@ -71,6 +73,10 @@ Json object_json(const Scene& scene, const ObjectTruth& seen) {
 
 }  // namespace
 
+std::string map_file(const std::string& image, std::string_view what) {
+  return fmt::format("{}-{}.png", image.substr(0, image.rfind('.')), what);
+}
+
 std::string truth_json(const Scene& scene, const std::vector<FrameTruth>& frames) {
   const ImagedRim rim = imaged_rim(scene.rig);
   Json out;
@@ -80,6 +86,14 @@ std::string truth_json(const Scene& scene, const std::vector<FrameTruth>& frames
   out["rim"] = {{"a_px", rounded(rim.ellipse.a_px, 5)},
                 {"b_px", rounded(rim.ellipse.b_px, 5)},
                 {"angle_deg", degrees(rim.ellipse.angle_rad)}};
+  out["mask"] = "mask.png";
+  out["class_values"] = {{"beyond", PixelClass::beyond},
+                         {"hole", PixelClass::hole},
+                         {"robot", PixelClass::robot},
+                         {"floor", PixelClass::floor},
+                         {"wall", PixelClass::wall},
+                         {"object", PixelClass::object},
+                         {"scenery", PixelClass::scenery}};
   Json ranges = Json::array();
   for (const RangeSample& sample : true_ranges(scene.rig)) {
     ranges.push_back({{"u_px", rounded(sample.at.u_px, 4)},
@@ -94,6 +108,8 @@ std::string truth_json(const Scene& scene, const std::vector<FrameTruth>& frames
     Json entry;
     entry["image"] = frame.image;
     entry["light"] = frame.light;
+    entry["classes"] = map_file(frame.image, "classes");
+    entry["objects_seen"] = map_file(frame.image, "objects");
     entry["pose"] = {{"x_m", rounded(frame.pose.x_m, 6)},
                      {"y_m", rounded(frame.pose.y_m, 6)},
                      {"heading_deg", degrees(frame.pose.heading_rad)}};

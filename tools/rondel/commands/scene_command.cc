@@ -22,8 +22,8 @@ std::string png(const cv::Mat& image) {
 
 }  // namespace
 
-/// OUT/ gets the frames by their names, marks.csv, swatches.csv and tape.csv where the scene plans a
-/// survey, and OUT/truth/ what only tests may read: truth.json, mask.png and maps of every frame.
+/// OUT/ gets the frames by their names, marks.csv, swatches.csv and tape.csv where the scene plans
+/// a survey, and OUT/truth/ what only tests may read: truth.json, mask.png and maps of every frame.
 Outcome scene_command(const Arguments& arguments, Progress& progress) {
   const std::filesystem::path out = arguments.words.at(1);
   int threads = std::max(1, static_cast<int>(std::thread::hardware_concurrency()));
@@ -48,11 +48,10 @@ Outcome scene_command(const Arguments& arguments, Progress& progress) {
         jpeg ? std::string(frame.jpeg.begin(), frame.jpeg.end()) : png(frame.bgr);
     write_file(out / frame.truth.image, file);
     bytes += file.size();
-    const std::filesystem::path map =
-        out / "truth" / std::filesystem::path(frame.truth.image).replace_extension();
-    write_file(map.string() + "-classes.png", png(frame.truth.classes));
-    write_file(map.string() + "-objects.png", png(frame.truth.objects));
-    if (k == 0) write_file(out / "truth" / "mask.png", png(frame.truth.mask));
+    const std::filesystem::path truth = out / "truth";
+    write_file(truth / scene::map_file(frame.truth.image, "classes"), png(frame.truth.classes));
+    write_file(truth / scene::map_file(frame.truth.image, "objects"), png(frame.truth.objects));
+    if (k == 0) write_file(truth / "mask.png", png(frame.truth.mask));
     truths.push_back(std::move(frame.truth));
   }
   progress.at("frames", static_cast<int>(truths.size()), static_cast<int>(truths.size()));
