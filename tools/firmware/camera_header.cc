@@ -175,8 +175,8 @@ static inline uint16_t @p@_count@bits@(const uint@bits@_t *first, uint16_t count
   while (count != 0u) {
     const uint16_t half = (uint16_t)(count >> 1);
     if (@P@_ROM@bits@(at + half) <= q) {
-      at += half + 1u;
-      count = (uint16_t)(count - half - 1u);
+      at += half + 1;
+      count = (uint16_t)(count - half - 1);
     } else {
       count = half;
     }
@@ -230,8 +230,8 @@ static inline uint16_t @p@_bearing(int16_t x, int16_t y) {
     while (count != 0u) {
       const uint8_t half = count >> 1;
       if ((uint16_t)(((uint32_t)along * @P@_ROM16(at + half)) >> 16) < across) {
-        at += half + 1u;
-        count = (uint8_t)(count - half - 1u);
+        at += half + 1;
+        count = (uint8_t)(count - half - 1);
       } else {
         count = half;
       }
