@@ -75,20 +75,25 @@ std::vector<LightChange> changes_of(const LightingSpec& spec) {
     return values;
   };
   const double middle = middle_kelvin(spec);
-  std::vector<double> reciprocals{0.0};  // of megakelvin, from the middle
-  if (!spec.auto_white_balance) {
-    reciprocals =
+  std::vector<LightChange> colours{{}};
+  if (spec.auto_white_balance) {
+    for (const double red : {1.0 / kBalanceError, kBalanceError}) {
+      for (const double blue : {1.0 / kBalanceError, kBalanceError}) {
+        colours.push_back({0.0, 0.0, {red, blue}});
+      }
+    }
+  } else {
+    const auto reciprocals =
         grid(1e6 / spec.kelvin[1] - 1e6 / middle, 1e6 / spec.kelvin[0] - 1e6 / middle, 25.0);
+    for (std::size_t k = 1; k < reciprocals.size(); ++k) {
+      colours.push_back(change_of_light(0.0, middle, 1e6 / (1e6 / middle + reciprocals[k])));
+    }
   }
   std::vector<LightChange> changes;
-  for (const double reciprocal : reciprocals) {
+  for (LightChange change : colours) {
     for (const double stops :
          grid(std::min(0.0, spec.stops[0]), std::max(0.0, spec.stops[1]), 0.5)) {
-      LightChange change;
       change.stops = stops;
-      if (reciprocal != 0.0) {
-        change = change_of_light(stops, middle, 1e6 / (1e6 / middle + reciprocal));
-      }
       changes.push_back(change);
     }
   }
@@ -100,6 +105,11 @@ std::string text_of(const LightChange& change) {
   if (change.stops != 0.0) text = fmt::format("{:+.2g} stop", change.stops);
   if (change.kelvin > 0.0) {
     text += fmt::format("{}{:.0f} K", text.empty() ? "" : ", ", change.kelvin);
+  } else if (change.gains.red != 1.0 || change.gains.blue != 1.0) {
+    text += fmt::format("{}red {:+.0f} %, blue {:+.0f} %",
+                        text.empty() ? "" : ", ",
+                        100.0 * (change.gains.red - 1.0),
+                        100.0 * (change.gains.blue - 1.0));
   }
   return text.empty() ? "as captured" : text;
 }

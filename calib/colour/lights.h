@@ -50,10 +50,14 @@ struct LightChange {
 /// camera whose white balance does not follow.
 [[nodiscard]] LightChange change_of_light(double stops, double from_kelvin, double to_kelvin);
 
-/// The changes that `spec` asks for: a grid over stops (steps of at most half a stop) and, without
-/// automatic white balance, over colour temperature (equal steps of at most 25 in reciprocal
-/// megakelvin). The unchanged light is always among them and comes first. Frames are taken to have
-/// been made in the middle of the range, `middle_kelvin`.
+/// What an automatic white balance is usually off by, as a factor on red and on blue.
+inline constexpr double kBalanceError = 1.06;
+
+/// The changes that `spec` asks for: a grid over stops (steps of at most half a stop), and over
+/// colour: without automatic white balance colour temperature (equal steps of at most 25 in
+/// reciprocal megakelvin), with it red and blue off by kBalanceError either way. The unchanged
+/// light is always among them and comes first. Frames are taken to have been made in the middle of
+/// the range, `middle_kelvin`.
 [[nodiscard]] std::vector<LightChange> changes_of(const LightingSpec& spec);
 [[nodiscard]] double middle_kelvin(const LightingSpec& spec);
 
