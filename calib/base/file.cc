@@ -1,10 +1,13 @@
 #include "calib/base/file.h"
 
+#include <fcntl.h>
 #include <unistd.h>
 
 #include <array>
 #include <bit>
+#include <cerrno>
 #include <charconv>
+#include <cstdio>
 #include <fstream>
 #include <iterator>
 #include <system_error>
@@ -23,23 +26,55 @@ std::string read_file(const std::filesystem::path& path) {
   return {std::istreambuf_iterator<char>(in), std::istreambuf_iterator<char>()};
 }
 
-void write_file(const std::filesystem::path& path, std::string_view bytes) {
+namespace {
+
+/// Writes `bytes` into a file beside `path`, hidden and of no known ending; its name.
+std::filesystem::path write_beside(const std::filesystem::path& path, std::string_view bytes) {
   namespace fs = std::filesystem;
   if (path.has_parent_path()) fs::create_directories(path.parent_path());
-  fs::path beside = path;
-  beside += ".part" + std::to_string(::getpid());
-  {
-    std::ofstream out(beside, std::ios::binary | std::ios::trunc);
-    out.write(bytes.data(), static_cast<std::streamsize>(bytes.size()));
-    out.flush();
-    if (!out) {
-      out.close();
-      std::error_code ignored;
-      fs::remove(beside, ignored);
-      throw fs::filesystem_error("cannot write", path, std::make_error_code(std::errc::io_error));
-    }
+  std::string name(1, '.');
+  name.append(path.filename().string()).append(".part").append(std::to_string(::getpid()));
+  const fs::path beside = path.parent_path() / name;
+  std::ofstream out(beside, std::ios::binary | std::ios::trunc);
+  out.write(bytes.data(), static_cast<std::streamsize>(bytes.size()));
+  out.flush();
+  if (!out) {
+    out.close();
+    std::error_code ignored;
+    fs::remove(beside, ignored);
+    throw fs::filesystem_error("cannot write", path, std::make_error_code(std::errc::io_error));
   }
-  fs::rename(beside, path);
+  return beside;
+}
+
+}  // namespace
+
+void write_file(const std::filesystem::path& path, std::string_view bytes) {
+  const std::filesystem::path beside = write_beside(path, bytes);
+  std::error_code error;
+  std::filesystem::rename(beside, path, error);
+  if (!error) return;
+  std::error_code ignored;
+  std::filesystem::remove(beside, ignored);
+  throw std::filesystem::filesystem_error("cannot write", path, error);
+}
+
+bool write_new_file(const std::filesystem::path& path, std::string_view bytes) {
+  namespace fs = std::filesystem;
+  if (fs::exists(fs::symlink_status(path))) return false;
+  const fs::path beside = write_beside(path, bytes);
+  int failure = 0;
+  if (::renameat2(AT_FDCWD, beside.c_str(), AT_FDCWD, path.c_str(), RENAME_NOREPLACE) != 0) {
+    failure = errno;
+    // Some file systems cannot rename without replacing; there the check above has to do.
+    if (failure == EINVAL && ::rename(beside.c_str(), path.c_str()) == 0) return true;
+  }
+  if (failure == 0) return true;
+  std::error_code ignored;
+  fs::remove(beside, ignored);
+  if (failure == EEXIST) return false;
+  throw fs::filesystem_error(
+      "cannot write", path, std::error_code(failure, std::generic_category()));
 }
 
 std::string sha256_hex(std::string_view bytes) {

@@ -16,6 +16,9 @@ namespace rondel {
 /// Creates the folder. Throws std::filesystem::filesystem_error.
 void write_file(const std::filesystem::path& path, std::string_view bytes);
 
+/// The same, but a file that is already there stays as it is, and the answer is false.
+[[nodiscard]] bool write_new_file(const std::filesystem::path& path, std::string_view bytes);
+
 /// SHA-256 (FIPS 180-4) as 64 lower-case hex digits.
 [[nodiscard]] std::string sha256_hex(std::string_view bytes);
 

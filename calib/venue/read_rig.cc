@@ -165,10 +165,14 @@ std::optional<std::vector<std::pair<double, double>>> read_points_file(
     const std::string& name,
     const std::filesystem::path& folder,
     std::vector<Problem>& problems) {
+  if (std::filesystem::path(name).filename() != name) {
+    mirror.complain("points_file", "must be a file beside rig.yaml, named without its folder");
+    return std::nullopt;
+  }
   const std::filesystem::path path = folder / name;
   std::error_code error;
   if (!std::filesystem::is_regular_file(path, error)) {
-    mirror.complain("points_file", fmt::format("there is no such file beside rig.yaml"));
+    mirror.complain("points_file", "there is no such file beside rig.yaml");
     return std::nullopt;
   }
   const std::size_t before = problems.size();

@@ -70,6 +70,10 @@ std::optional<double> bearing_of(const CsvRow& row, bool& fine) {
 std::optional<std::vector<double>> numbers_of(const CsvRow& row) {
   std::vector<double> numbers;
   std::string_view text = row.cell("points");
+  if (text.empty()) {
+    row.complain("points", "is empty; write its numbers with blanks between them");
+    return std::nullopt;
+  }
   while (true) {
     const std::size_t begin = text.find_first_not_of(" \t\r\n");
     if (begin == std::string_view::npos) return numbers;
@@ -246,7 +250,7 @@ std::vector<Stroke> read_strokes(std::string_view text,
     stroke.hide = kind == "hide";
     const auto width_px = row.number("width_px", {0.0, 2000.0, true});
     const auto numbers = numbers_of(row);
-    if (numbers && (numbers->empty() || numbers->size() % 2 != 0)) {
+    if (numbers && numbers->size() % 2 != 0) {
       row.complain("points", "a stroke is 'u0 v0 u1 v1 ...', one point or more");
       continue;
     }

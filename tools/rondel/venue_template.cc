@@ -9,7 +9,8 @@ namespace rondel::app {
 namespace {
 
 /// Where the top-level block `key:` of a YAML text begins and ends (whole lines, its comments above
-/// left alone). Nothing where the text has no such line; flow-style files are then left as they are.
+/// left alone). Nothing where the text has no such line; flow-style files are then left as they
+/// are.
 struct Block {
   std::size_t begin = 0;
   std::size_t end = 0;
@@ -21,14 +22,13 @@ std::optional<Block> top_block(std::string_view text, std::string_view key) {
     const std::size_t stop = text.find('\n', at);
     const std::size_t end = stop == std::string_view::npos ? text.size() : stop + 1;
     const std::string_view line = text.substr(at, end - at);
-    const bool begins = line.substr(0, key.size()) == key &&
-                        line.substr(key.size(), 1) == std::string_view(":");
-    if (begins) {
+    const bool silent = line.find_first_not_of(" \t\r\n") == std::string_view::npos ||
+                        line.front() == '#';  // may stand between a block's lines or after it
+    if (line.substr(0, key.size()) == key && line.substr(key.size(), 1) == ":") {
       block = Block{at, end};
-    } else if (block && (line[0] == ' ' || line[0] == '\t')) {
+    } else if (block && !silent) {
+      if (line.front() != ' ' && line.front() != '\t' && line.front() != '}') return block;
       block->end = end;
-    } else if (block) {
-      return block;
     }
     at = end;
   }

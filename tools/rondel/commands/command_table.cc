@@ -10,17 +10,30 @@ namespace {
 
 constexpr std::array kNewFlags = {
     Flag{"--from", "VENUE", "Take the rig and what belongs to the robot from another venue."},
+    Flag{"--marks", "", "With --from: take its marks too, where mirror and mount are the same."},
     Flag{"--name", "NAME", "The venue's name; without it the folder's."},
 };
 
 constexpr std::array kGrabFlags = {
     Flag{"--light", "NAME", "The light these frames belong to: a folder inside frames/."},
-    Flag{"--count", "N", "How many frames at most; without it 12."},
-    Flag{"--every", "SECONDS", "Time from one kept frame to the next; without it 0.5."},
+    Flag{"--count", "N", "How many frames at most; without it 12, of a folder all."},
+    Flag{"--every", "SECONDS", "Time from one kept frame to the next, s; without it 0.5."},
+};
+
+constexpr std::array kTablesFlags = {
+    Flag{"--verify", "", "Encode and decode every pixel, and hold it against the curve."},
+};
+
+constexpr std::array kRangeFlags = {
+    Flag{"--tape", "", "Make marks from tape rows whose object is found; every second row checks."},
+    Flag{"--model", "NAME", "Fit this model only; without it the best of all."},
 };
 
 constexpr std::array kCheckFlags = {
     Flag{"--batch", "FOLDER", "Check another folder's frames/ and tape.csv with this venue."},
+    Flag{"--shard", "I/N", "Look at every Nth image only, and keep what was seen for --merge."},
+    Flag{"--merge", "", "Join the kept shards to what one run over all images gives."},
+    Flag{"--repair", "", "Refit only the cause that was found, into a copy, where that gains."},
 };
 
 constexpr std::array kRunFlags = {
@@ -30,6 +43,7 @@ constexpr std::array kRunFlags = {
 constexpr std::array kAdviseFlags = {
     Flag{"--count", "N", "How many marks to propose; without it 1."},
     Flag{"--goal", "worst|mean", "Lower the largest error over the range, or the mean one."},
+    Flag{"--room-m", "METRES", "How far from the robot there is room to measure."},
 };
 
 constexpr std::array kPlaceFlags = {
@@ -58,13 +72,14 @@ constexpr std::array kCommands = {
     Command{"centre", "VENUE", "Find the mirror's rim and centre.", kNoFlags, centre_command},
     Command{
         "mask", "VENUE", "Find what hides the floor: the robot itself.", kNoFlags, mask_command},
-    Command{"range", "VENUE", "Fit the range curve to the marks.", kNoFlags, range_command},
+    Command{"range", "VENUE", "Fit the range curve to the marks.", kRangeFlags, range_command},
     Command{"colours",
             "VENUE",
             "Choose colour thresholds that hold in every light.",
             kNoFlags,
             colours_command},
-    Command{"tables", "VENUE", "Make the tables that the boards carry.", kNoFlags, tables_command},
+    Command{
+        "tables", "VENUE", "Make the tables that the boards carry.", kTablesFlags, tables_command},
     Command{"check",
             "VENUE",
             "Hold images against the tape sheet and give a verdict with reasons.",

@@ -24,6 +24,7 @@ struct StepRow {
   std::string name;
   Outcome (*run)(const Workspace&, Progress&);
   std::vector<std::string> needs;  ///< steps without whose results it cannot run
+  std::vector<std::string> uses;   ///< steps whose results it takes where there are such
   /// Why the step has nothing to do in this venue; nothing when it has.
   std::optional<std::string> (*idle)(const Workspace&);
 };
@@ -58,12 +59,12 @@ std::optional<std::string> check_idle(const Workspace& workspace) {
 
 const std::vector<StepRow>& step_rows() {
   static const std::vector<StepRow> kRows = {
-      {"centre", centre_step, {}, centre_idle},
-      {"mask", mask_step, {"centre"}, mask_idle},
-      {"range", range_step, {"centre"}, range_idle},
-      {"colours", colours_step, {"mask"}, colours_idle},
-      {"tables", tables_step, {"range"}, never_idle},
-      {"check", check_step, {"tables", "colours"}, check_idle},
+      {"centre", centre_step, {}, {}, centre_idle},
+      {"mask", mask_step, {"centre"}, {}, mask_idle},
+      {"range", range_step, {"centre"}, {}, range_idle},
+      {"colours", colours_step, {"mask"}, {}, colours_idle},
+      {"tables", tables_step, {"range"}, {"mask", "colours"}, never_idle},
+      {"check", check_step, {"tables", "colours"}, {}, check_idle},
   };
   return kRows;
 }
@@ -100,19 +101,25 @@ class Run {
       : workspace_(workspace), again_(again), progress_(progress) {}
 
   void step(const StepRow& row) {
-    const std::string lacking = lacking_for(row);
     if (const auto idle = row.idle(workspace_)) {
-      absent_.insert(row.name);
-      say(row, "left out", *idle, {});
+      std::error_code error;
+      if (std::filesystem::is_regular_file(result_of(workspace_, row.name), error)) {
+        kept_ = true;
+        say(row, "kept from before", *idle, {});
+      } else {
+        absent_.insert(row.name);
+        say(row, "left out", *idle, {});
+      }
       return;
     }
-    if (!lacking.empty()) {
+    if (const std::string lacking = lacking_for(row); !lacking.empty()) {
       absent_.insert(row.name);
-      say(row, "left out", fmt::format("it needs {}, which has no result", lacking), {});
+      say(row, "left out", lacking, {});
       return;
     }
     const StepState state = state_of(workspace_, row.name);
     if (state.freshness == Freshness::fresh && !again_) {
+      kept_ = true;
       say(row, "fresh", "nothing it was made from has changed", {});
       return;
     }
@@ -128,9 +135,8 @@ class Run {
       ran_ = true;
       say(row, "done", why, outcome);
     } catch (const InputError& error) {
-      failed_ = true;
-      absent_.insert(row.name);
-      problems_.insert(problems_.end(), error.problems().begin(), error.problems().end());
+      failed_.insert(row.name);
+      for (const Problem& problem : error.problems()) progress_.note(to_text(problem));
       say(row, "failed", error.what(), {});
     }
   }
@@ -139,13 +145,17 @@ class Run {
     const std::filesystem::path page = workspace_.results() / "report.html";
     std::error_code error;
     const bool anything = std::filesystem::is_directory(workspace_.results(), error);
-    if (anything && (ran_ || failed_ || !std::filesystem::is_regular_file(page, error))) {
+    const bool failed = !failed_.empty();
+    if (anything && (ran_ || failed || !std::filesystem::is_regular_file(page, error))) {
       report::write_report(workspace_);
     }
     Outcome outcome;
-    const Verdict verdict =
-        absent_.count("check") == 0 ? verdict_on_file(workspace_) : Verdict::none;
-    if (!ran_ && !failed_) summary_ += "Nothing to do: every result is fresh.\n";
+    const Verdict verdict = missing("check").empty() ? verdict_on_file(workspace_) : Verdict::none;
+    if (!ran_ && !failed) {
+      summary_ +=
+          kept_ ? "Nothing to do: what can be made is fresh.\n"
+                : "Nothing could be done yet: the lines above say what each step waits for.\n";
+    }
     summary_ += verdict == Verdict::none       ? "Verdict: none yet\n"
                 : verdict == Verdict::accepted ? "Verdict: accepted\n"
                                                : "Verdict: not accepted\n";
@@ -157,19 +167,27 @@ class Run {
     outcome.summary = std::move(summary_);
     outcome.document = std::move(document_);
     if (verdict == Verdict::not_accepted) outcome.status = 1;
-    if (failed_) {
-      outcome.status = 2;
-      for (const Problem& problem : problems_) progress_.note(to_text(problem));
-    }
+    if (failed) outcome.status = 2;
     return outcome;
   }
 
  private:
-  /// The names of the steps that `row` needs and that have no result.
+  /// Why there is no result of `step` to go on with; "" where there is one.
+  [[nodiscard]] std::string missing(const std::string& step) const {
+    if (failed_.count(step) != 0) return step + " failed";
+    if (absent_.count(step) != 0) return step + " has no result";
+    return "";
+  }
+
+  /// Why `row` cannot run, "" when it can. What it merely uses may be absent, but a failure there
+  /// would hand on a result that is out of date.
   [[nodiscard]] std::string lacking_for(const StepRow& row) const {
     std::vector<std::string> lacking;
     for (const std::string& need : row.needs) {
-      if (absent_.count(need) != 0) lacking.push_back(need);
+      if (const std::string why = missing(need); !why.empty()) lacking.push_back(why);
+    }
+    for (const std::string& use : row.uses) {
+      if (failed_.count(use) != 0) lacking.push_back(missing(use));
     }
     return joined(lacking);
   }
@@ -183,6 +201,8 @@ class Run {
     if (outcome) {
       summary_ += fmt::format(" ({})\n{}", why, indented(outcome->summary));
       entry["result"] = outcome->document;
+    } else if (why.find('\n') != std::string::npos) {
+      summary_ += "\n" + indented(why);
     } else {
       summary_ += fmt::format(" ({})\n", why);
     }
@@ -193,9 +213,9 @@ class Run {
   bool again_;
   Progress& progress_;
   bool ran_ = false;
-  bool failed_ = false;
+  bool kept_ = false;  ///< some result of before still stands
   std::set<std::string> absent_;
-  std::vector<Problem> problems_;
+  std::set<std::string> failed_;
   std::string summary_;
   nlohmann::ordered_json document_ = {{"steps", nlohmann::ordered_json::array()}};
 };
