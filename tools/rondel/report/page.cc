@@ -76,7 +76,8 @@ std::string gauge(const ordered_json& criterion) {
       svg);
 }
 
-std::string verdict_html(const Workspace& workspace) {
+/// `of_batch`: the verdict is on another folder's frames, whose record is not the venue's.
+std::string verdict_html(const Workspace& workspace, bool of_batch) {
   static constexpr std::string_view kGoodMark =
       "<svg viewBox=\"0 0 20 20\" aria-hidden=\"true\"><circle class=\"good\" cx=\"10\" cy=\"10\" "
       "r=\"9\" fill=\"none\" stroke-width=\"1.6\"/><path class=\"good\" fill=\"none\" "
@@ -101,7 +102,7 @@ std::string verdict_html(const Workspace& workspace) {
       accepted ? "Accepted" : "Not accepted");
   out += "<ul>";
   if (check->value("partial", false)) out += "<li>Partial: the check was stopped early.</li>";
-  if (state_of(workspace, "check").freshness == Freshness::stale) {
+  if (!of_batch && state_of(workspace, "check").freshness == Freshness::stale) {
     out +=
         "<li>Something has changed since: run <code>rondel run</code> for a verdict on what is "
         "there now.</li>";
@@ -177,16 +178,15 @@ std::string head_html(const Workspace& workspace) {
       block);
 }
 
-}  // namespace
-
-std::filesystem::path write_report(const Workspace& workspace) {
+std::filesystem::path write_page(const Workspace& workspace, bool of_batch) {
   std::string nav;
   std::string sections;
   int number = 0;
   for (const PageStep& step : kSteps) {
+    if (of_batch && step.id != "check") continue;
     ++number;
     const std::optional<Section> section = step.section(workspace);
-    const StepState state = state_of(workspace, step.id);
+    const StepState state = of_batch ? StepState{} : state_of(workspace, step.id);
     const std::string_view mark =
         !section
             ? " <span class=\"state\">not run</span>"
@@ -232,12 +232,12 @@ std::filesystem::path write_report(const Workspace& workspace) {
       "<link rel=\"icon\" href=\"data:,\">\n<title>{}: calibration report</title>\n<style>\n",
       text(workspace.venue.name));
   page += asset_page_css();
-  page +=
-      "</style>\n</head>\n<body>\n<a class=\"skip\" href=\"#centre\">To the steps</a>\n"
-      "<main class=\"page\">\n";
+  page += "</style>\n</head>\n<body>\n<a class=\"skip\" href=\"#";
+  page += of_batch ? "check" : "centre";
+  page += "\">To the steps</a>\n<main class=\"page\">\n";
   page += head_html(workspace);
-  page += verdict_html(workspace);
-  page += "<nav aria-label=\"Steps\">\n" + nav + "</nav>\n";
+  page += verdict_html(workspace, of_batch);
+  if (!of_batch) page += "<nav aria-label=\"Steps\">\n" + nav + "</nav>\n";
   page += sections;
   page +=
       "<footer class=\"foot\"><p><strong>Safety.</strong> These numbers hold for the rig, floor "
@@ -254,6 +254,20 @@ std::filesystem::path write_report(const Workspace& workspace) {
   const std::filesystem::path path = workspace.results() / "report.html";
   write_file(path, page);
   return path;
+}
+
+}  // namespace
+
+std::filesystem::path write_report(const Workspace& workspace) {
+  return write_page(workspace, false);
+}
+
+std::filesystem::path write_check_report(const Workspace& workspace, const Batch& batch) {
+  Workspace of_batch = workspace;
+  of_batch.folder = batch.folder;
+  of_batch.frames = batch.frames;
+  of_batch.tape = batch.tape;
+  return write_page(of_batch, true);
 }
 
 }  // namespace rondel::app::report

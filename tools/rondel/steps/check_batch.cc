@@ -25,10 +25,12 @@ int object_index(const VenueSpec& venue, const std::string& name) {
   return -1;
 }
 
-std::string place(const TapeRow& row) { return fmt::format("tape.csv:{}", row.line); }
+std::string place(const std::string& sheet, int line) { return fmt::format("{}:{}", sheet, line); }
 
 /// Rows that cannot both be true.
-void find_contradictions(const std::vector<TapeRow>& tape, std::vector<Problem>& problems) {
+void find_contradictions(const std::vector<TapeRow>& tape,
+                         const std::string& sheet,
+                         std::vector<Problem>& problems) {
   std::map<std::tuple<std::string, std::string, double, double>, int> seen;
   std::map<std::pair<std::string, std::string>, std::pair<int, int>> presence;  // lines
   for (const TapeRow& row : tape) {
@@ -36,7 +38,7 @@ void find_contradictions(const std::vector<TapeRow>& tape, std::vector<Problem>&
     const auto [same, fresh] =
         seen.insert({{row.image, row.object, row.absent ? -1.0 : row.range_m, bearing}, row.line});
     if (!fresh) {
-      problems.push_back({place(row),
+      problems.push_back({place(sheet, row.line),
                           fmt::format("{}, {} is listed twice, first in line {}; delete one",
                                       row.image,
                                       row.object,
@@ -47,7 +49,7 @@ void find_contradictions(const std::vector<TapeRow>& tape, std::vector<Problem>&
     (row.absent ? absent_line : present_line) = row.line;
     if (present_line != 0 && absent_line != 0) {
       problems.push_back(
-          {place(row),
+          {place(sheet, row.line),
            fmt::format("{} in {} is said to be both there (line {}) and absent (line {}); an empty "
                        "range_m means absent",
                        row.object,
@@ -83,14 +85,7 @@ std::vector<verdict::Find> finds_in(const Examiner& examiner, const cv::Mat& bgr
     find.measured = blob.measured;
     find.area_px = blob.area_px;
     find.cut_by_mask = blob.cut_by_mask;
-    const link::Codes codes =
-        link::encode(*examiner.tables,
-                     blob.object,
-                     static_cast<int>(std::lround(blob.measured.u_px * link::kSubpixel)),
-                     static_cast<int>(std::lround(blob.measured.v_px * link::kSubpixel)));
-    find.range_code = codes.range_code;
-    find.bearing_code = codes.bearing_code;
-    find.reported = link::decode(*examiner.tables, codes);
+    report_find(*examiner.tables, find);
     if (examiner.curve != nullptr) {
       const double height_m =
           examiner.detector.objects[static_cast<std::size_t>(blob.object)].seen_height_m();
@@ -131,32 +126,45 @@ class Rate {
 
 }  // namespace
 
+void report_find(const link::BoardTables& tables, verdict::Find& find) {
+  const link::Codes codes =
+      link::encode(tables,
+                   find.object,
+                   static_cast<int>(std::lround(find.measured.u_px * link::kSubpixel)),
+                   static_cast<int>(std::lround(find.measured.v_px * link::kSubpixel)));
+  find.range_code = codes.range_code;
+  find.bearing_code = codes.bearing_code;
+  find.reported = link::decode(tables, codes);
+}
+
 TapeBatch make_batch(const VenueSpec& venue,
                      const std::vector<FrameFile>& frames,
-                     const std::vector<TapeRow>& tape) {
+                     const std::vector<TapeRow>& tape,
+                     const std::string& sheet) {
   if (tape.empty()) {
-    throw InputError("tape.csv",
+    throw InputError(sheet,
                      "has no rows; write one row per measured object: "
                      "image,object,range_m,bearing_deg");
   }
   if (tape.size() > kMostTapeRows) {
-    throw InputError(place(tape[kMostTapeRows]),
+    throw InputError(place(sheet, tape[kMostTapeRows].line),
                      fmt::format("row {} of {}: at most {} rows fit one check; split the sheet",
                                  kMostTapeRows + 1,
                                  tape.size(),
                                  kMostTapeRows));
   }
   std::vector<Problem> problems;
-  find_contradictions(tape, problems);
+  find_contradictions(tape, sheet, problems);
   std::map<std::string, const FrameFile*> files;
   for (const FrameFile& file : frames) files[file.image] = &file;
   std::map<std::string, int> index_of;  // sorted by name
   for (const TapeRow& row : tape) {
     if (!files.contains(row.image)) {
-      problems.push_back({place(row), fmt::format("image {}: there is no such frame", row.image)});
-    } else if (object_index(venue, row.object) < 0) {
       problems.push_back(
-          {place(row), fmt::format("object {}: venue.yaml has no such object", row.object)});
+          {place(sheet, row.line), fmt::format("image {}: there is no such frame", row.image)});
+    } else if (object_index(venue, row.object) < 0) {
+      problems.push_back({place(sheet, row.line),
+                          fmt::format("object {}: venue.yaml has no such object", row.object)});
     } else {
       index_of[row.image] = 0;
     }
@@ -164,6 +172,7 @@ TapeBatch make_batch(const VenueSpec& venue,
   if (!problems.empty()) throw InputError(std::move(problems));
 
   TapeBatch batch;
+  batch.sheet = sheet;
   for (auto& [image, index] : index_of) {
     index = static_cast<int>(batch.images.size());
     batch.images.push_back({image, files[image]->light});
@@ -257,7 +266,7 @@ Examined examine(const Examiner& examiner,
     std::string& failure = failures[static_cast<std::size_t>(entry.image)];
     if (failure.empty()) continue;
     problems.push_back(
-        {fmt::format("tape.csv:{}", entry.line),
+        {place(batch.sheet, entry.line),
          fmt::format(
              "image {}: {}", batch.images[static_cast<std::size_t>(entry.image)].image, failure)});
     failure.clear();  // once an image

@@ -19,6 +19,7 @@ struct TapeBatch {
   std::vector<verdict::ImageEntry> images;
   std::vector<std::filesystem::path> paths;  ///< of the images
   std::vector<verdict::TapeEntry> tape;
+  std::string sheet = "tape.csv";  ///< the sheet's name in messages
 };
 
 /// More rows than this are refused: an archive this large belongs in several sheets.
@@ -28,7 +29,8 @@ inline constexpr std::size_t kMostTapeRows = 200000;
 /// many rows, images that do not exist, rows listed twice, objects both absent and present.
 [[nodiscard]] TapeBatch make_batch(const VenueSpec& venue,
                                    const std::vector<FrameFile>& frames,
-                                   const std::vector<TapeRow>& tape);
+                                   const std::vector<TapeRow>& tape,
+                                   const std::string& sheet);
 
 /// What a board needs to answer, and what is needed beside it to say where its errors come from.
 struct Examiner {
@@ -38,6 +40,9 @@ struct Examiner {
   CameraSpec camera;
   double pixel_noise = 0.3;  ///< one standard deviation of a blob's place, px
 };
+
+/// Fills in what the boards make of a blob at `find.measured`: codes, and their meaning.
+void report_find(const link::BoardTables& tables, verdict::Find& find);
 
 /// Marks rows whose place is behind the mask or out of sight.
 void mark_hidden(const Examiner& examiner, const VenueSpec& venue, TapeBatch& batch);

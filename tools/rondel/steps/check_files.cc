@@ -291,10 +291,21 @@ nlohmann::ordered_json check_document(const CheckReport& report) {
   json["tables_identity"] = report.tables_identity;
   json["worst"] = ordered_json::array();
   for (const std::size_t i : worst_rows(report, 10)) json["worst"].push_back(i);
-  json["measurements"] = ordered_json::array();
-  for (std::size_t i = 0; i < v.rows.size(); ++i)
-    json["measurements"].push_back(row_json(report, i));
   return json;
+}
+
+std::string check_json(const CheckReport& report, const MadeFrom& made_from) {
+  // Measurements are written one by one: an archive's rows need not stand in memory twice.
+  std::string out = check_document(report).dump(2);
+  out.erase(out.rfind("\n}"));
+  out += ",\n  \"measurements\": [";
+  for (std::size_t i = 0; i < report.verdict.rows.size(); ++i) {
+    out += i == 0 ? "\n    " : ",\n    ";
+    out += row_json(report, i).dump();
+  }
+  ordered_json record = ordered_json::object();
+  for (const auto& [name, hash] : made_from) record[name] = hash;
+  return out + "\n  ],\n  \"made_from\": " + record.dump() + "\n}\n";
 }
 
 std::string check_csv(const CheckReport& report) {

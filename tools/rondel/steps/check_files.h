@@ -23,8 +23,10 @@ struct CheckReport {
   int images_in_sheet = 0;
 };
 
-/// check.json without its made_from.
+/// What `check --json` prints: check.json without its measurements and record.
 [[nodiscard]] nlohmann::ordered_json check_document(const CheckReport& report);
+/// check.json: the document, a line for each measurement, and the record.
+[[nodiscard]] std::string check_json(const CheckReport& report, const MadeFrom& made_from);
 /// A row a measurement, in the order of images and of the tape sheet.
 [[nodiscard]] std::string check_csv(const CheckReport& report);
 /// JUnit's XML: a suite for the tolerances, one for the rows of each light.
