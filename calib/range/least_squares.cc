@@ -55,6 +55,21 @@ class TermCost final : public ceres::CostFunction {
   const Eigen::VectorXd& scale_;
 };
 
+/// Whether every term can be evaluated at the start; the solver complains loudly where not.
+bool can_start(const LeastSquaresProblem& problem, const LeastSquaresSolution& solution) {
+  for (std::size_t i = 0; i < problem.terms.size(); ++i) {
+    const Term& term = problem.terms[i];
+    Eigen::VectorXd r(term.residuals);
+    Eigen::MatrixXd by_shared(term.residuals, problem.start.size());
+    Eigen::MatrixXd by_latent(term.residuals, term.latent);
+    if (!term.evaluate(problem.start, solution.latent[i], r, &by_shared, &by_latent) ||
+        !r.allFinite() || !by_shared.allFinite() || !by_latent.allFinite()) {
+      return false;
+    }
+  }
+  return true;
+}
+
 }  // namespace
 
 LeastSquaresSolution solve(const LeastSquaresProblem& problem) {
@@ -67,6 +82,9 @@ LeastSquaresSolution solve(const LeastSquaresProblem& problem) {
                                   ? term.latent_start
                                   : Eigen::VectorXd::Zero(term.latent));
   }
+
+  solution.shared = problem.start;
+  if (!can_start(problem, solution)) return solution;
 
   ceres::Problem::Options ownership;
   ownership.loss_function_ownership = ceres::DO_NOT_TAKE_OWNERSHIP;
