@@ -129,16 +129,6 @@ double Ellipse::radius_px(double azimuth_rad) const {
   return 1.0 / (shape_of(p).inverse() * towards).norm();
 }
 
-double Ellipse::radius_from_px(ImagePoint from, double azimuth_rad) const {
-  const Eigen::Matrix2d inverse = shape_of(p).inverse();
-  const Eigen::Vector2d d = inverse * Eigen::Vector2d(std::cos(azimuth_rad), std::sin(azimuth_rad));
-  const Eigen::Vector2d o = inverse * Eigen::Vector2d(from.u_px - p[0], from.v_px - p[1]);
-  const double a = d.squaredNorm();
-  const double b = d.dot(o);
-  const double c = o.squaredNorm() - 1.0;
-  return (-b + std::sqrt(std::max(0.0, b * b - a * c))) / a;
-}
-
 double Ellipse::distance_px(ImagePoint at, Vec5* jacobian) const {
   const Eigen::Matrix2d shape = shape_of(p);
   const Eigen::Vector2d y(at.u_px - p[0], at.v_px - p[1]);

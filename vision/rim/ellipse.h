@@ -21,8 +21,6 @@ struct Ellipse {
   [[nodiscard]] RimEllipse axes() const;
   /// Distance from the ellipse's own centre to the curve in direction `azimuth_rad`, u towards v.
   [[nodiscard]] double radius_px(double azimuth_rad) const;
-  /// The curve's point in direction `azimuth_rad` from `from`, which lies inside: its distance.
-  [[nodiscard]] double radius_from_px(ImagePoint from, double azimuth_rad) const;
   /// Signed distance to the nearest point of the curve, positive outside, and its derivative by p.
   /// The derivative follows from the foot point alone, since the foot is stationary.
   [[nodiscard]] double distance_px(ImagePoint at,

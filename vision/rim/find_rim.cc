@@ -23,11 +23,21 @@ struct Support {
   double in_image = 0.0;  ///< share of the circumference inside the image
 };
 
-/// Calls `visit(ray, nearest edge or null)` for each ray that meets the circle inside the image.
+/// Calls `visit(ray, nearest edge or null)` for every `every`th ray, where it meets the circle
+/// inside the image.
 template <class Visit>
-void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Visit visit) {
-  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
-    const double r = circle.radius_from_px(edges.from, edges.azimuth_rad(ray));
+void walk(const RadialEdges& edges,
+          const Ellipse& circle,
+          double within_px,
+          std::size_t every,
+          Visit visit) {
+  const double du = circle.p[0] - edges.from.u_px;
+  const double dv = circle.p[1] - edges.from.v_px;
+  const double squared = circle.p[2] * circle.p[2];
+  for (std::size_t ray = 0; ray < edges.rays.size(); ray += every) {
+    const double along = du * edges.cos_azimuth[ray] + dv * edges.sin_azimuth[ray];
+    const double across = dv * edges.cos_azimuth[ray] - du * edges.sin_azimuth[ray];
+    const double r = along + std::sqrt(std::max(0.0, squared - across * across));
     if (r > edges.end_px[ray]) continue;
     const auto& candidates = edges.rays[ray];
     auto above = std::lower_bound(
@@ -47,18 +57,21 @@ void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Vis
   }
 }
 
-Support support_of(const RadialEdges& edges, const Ellipse& circle, double within_px) {
+Support support_of(const RadialEdges& edges,
+                   const Ellipse& circle,
+                   double within_px,
+                   std::size_t every = 1) {
   int met = 0;
   int hit = 0;
   int falling = 0;
-  walk(edges, circle, within_px, [&](std::size_t, const RadialEdge* edge) {
+  walk(edges, circle, within_px, every, [&](std::size_t, const RadialEdge* edge) {
     ++met;
     if (edge == nullptr) return;
     ++hit;
     if (edge->step < 0.0) ++falling;
   });
   Support support;
-  support.in_image = met / static_cast<double>(edges.rays.size());
+  support.in_image = met * static_cast<double>(every) / static_cast<double>(edges.rays.size());
   support.share = met > 0 ? hit / static_cast<double>(met) : 0.0;
   support.falling = hit > 0 ? falling / static_cast<double>(hit) : 0.0;
   return support;
@@ -72,11 +85,10 @@ bool holds(const Ellipse& circle, ImagePoint at) {
 std::optional<Ellipse> refitted(const RadialEdges& edges, const Ellipse& circle, double within_px) {
   Eigen::Matrix3d normal = Eigen::Matrix3d::Zero();
   Eigen::Vector3d right = Eigen::Vector3d::Zero();
-  walk(edges, circle, within_px, [&](std::size_t ray, const RadialEdge* edge) {
+  walk(edges, circle, within_px, 1, [&](std::size_t ray, const RadialEdge* edge) {
     if (edge == nullptr) return;
-    const double azimuth = edges.azimuth_rad(ray);
-    const double u = edge->radius_px * std::cos(azimuth);
-    const double v = edge->radius_px * std::sin(azimuth);
+    const double u = edge->radius_px * edges.cos_azimuth[ray];
+    const double v = edge->radius_px * edges.sin_azimuth[ray];
     const Eigen::Vector3d row(u, v, 1.0);
     normal += row * row.transpose();
     right += row * (u * u + v * v);
@@ -115,9 +127,8 @@ std::vector<Candidate> circles_in(const RadialEdges& edges,
   const auto point = [&](std::size_t ray) {
     const auto& candidates = edges.rays[ray];
     const double r = candidates[pick(candidates.size())].radius_px;
-    const double azimuth = edges.azimuth_rad(ray);
-    return ImagePoint{edges.from.u_px + r * std::cos(azimuth),
-                      edges.from.v_px + r * std::sin(azimuth)};
+    return ImagePoint{edges.from.u_px + r * edges.cos_azimuth[ray],
+                      edges.from.v_px + r * edges.sin_azimuth[ray]};
   };
   const std::size_t apart = edges.rays.size() / 8;
   const auto far = [&](std::size_t a, std::size_t b) {
@@ -136,6 +147,8 @@ std::vector<Candidate> circles_in(const RadialEdges& edges,
         !holds(*circle, edges.from)) {
       continue;
     }
+    // A quarter of the rays tells most draws from a circle.
+    if (support_of(edges, *circle, within_px, 4).share < 0.25) continue;
     const Support support = support_of(edges, *circle, within_px);
     if (support.in_image < least_in_image || support.share < 0.3) continue;
     found.push_back({*circle, support});
@@ -247,21 +260,87 @@ struct Refined {
   double seen = 0.0;
 };
 
+/// Moves the ellipse to where most rays have an edge on it, each ray counting the same however
+/// strong its edge: what lies near the rim inside (a dark skirting, a lane) may be stronger than
+/// the rim, but is no ellipse for long. Coarse to fine over centre and radius.
+Ellipse lock_on(const NearEdges& edges, Ellipse start, double reach_px) {
+  const auto agreement = [&](double du, double dv, double dr, double width_px) {
+    double sum = 0.0;
+    for (std::size_t ray = 0; ray < edges.rays.size(); ray += 4) {
+      if (edges.rays[ray].empty()) continue;
+      const double wanted =
+          edges.start_px[ray] + dr + du * edges.cos_azimuth[ray] + dv * edges.sin_azimuth[ray];
+      double nearest = 3.0 * width_px;
+      for (const RadialEdge& e : edges.rays[ray]) {
+        nearest = std::min(nearest, std::abs(e.radius_px - wanted));
+      }
+      const double x = nearest / width_px;
+      sum += std::max(0.0, 1.0 - x * x / 9.0);
+    }
+    return sum;
+  };
+  double du = 0.0;
+  double dv = 0.0;
+  double dr = 0.0;
+  double span = 0.6 * reach_px;
+  for (double step = 0.3 * reach_px; step > 0.04 * reach_px; step *= 0.5) {
+    double best = -1.0;
+    const double u0 = du;
+    const double v0 = dv;
+    const double r0 = dr;
+    const int n = cvRound(span / step);
+    for (int a = -n; a <= n; ++a) {
+      for (int b = -n; b <= n; ++b) {
+        for (int c = n; c >= -n; --c) {  // of equals the outer one
+          const double score =
+              agreement(u0 + a * step, v0 + b * step, r0 + c * step, std::max(0.25, 0.5 * step));
+          if (score <= best) continue;
+          best = score;
+          du = u0 + a * step;
+          dv = v0 + b * step;
+          dr = r0 + c * step;
+        }
+      }
+    }
+    span = 2.0 * step;
+  }
+  start.p[0] += du;
+  start.p[1] += dv;
+  start.p[2] += dr;
+  start.p[3] += dr;
+  return start;
+}
+
 /// Sub-pixel edges about `start`, window narrowing, and their ellipse.
 std::optional<Refined> refine(const cv::Mat& grey,
                               Ellipse start,
-                              double first_reach_px,
-                              double noise) {
+                              double reach_px,
+                              double least_step) {
   constexpr int kRays = 720;
+  constexpr double kSpreadRays = 2.0;
+  start =
+      lock_on(edges_near(grey, start, reach_px, least_step, kRays, kSpreadRays), start, reach_px);
   std::optional<EllipseFit> fit;
   int on_curve = 0;
-  for (const double reach : {first_reach_px, std::min(first_reach_px, 3.0), 2.0}) {
-    const std::vector<EdgePoint> edges = edges_near(grey, start, reach, kRays, 2.0 * noise);
-    if (edges.size() < kRays / 4) return std::nullopt;
+  for (const double within_px : {1.5, 1.0, 0.8}) {
+    const NearEdges edges = edges_near(grey, start, 3.0, least_step, kRays, kSpreadRays);
     std::vector<ImagePoint> points;
-    points.reserve(edges.size());
-    for (const EdgePoint& e : edges) points.push_back(e.at);
-    fit = fit_ellipse(points, start, {0.003});
+    for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
+      const RadialEdge* best = nullptr;
+      double distance = within_px;
+      for (const RadialEdge& e : edges.rays[ray]) {
+        const double d = std::abs(e.radius_px - edges.start_px[ray]);
+        if (d < distance) {
+          distance = d;
+          best = &e;
+        }
+      }
+      if (best == nullptr) continue;
+      points.push_back({edges.from.u_px + best->radius_px * edges.cos_azimuth[ray],
+                        edges.from.v_px + best->radius_px * edges.sin_azimuth[ray]});
+    }
+    if (points.size() < kRays / 4) return std::nullopt;
+    fit = fit_ellipse(points, start, {0.003}, 24);
     if (!fit) return std::nullopt;
     start = fit->ellipse;
     on_curve = 0;
@@ -284,7 +363,7 @@ ObservedPoint observed(const EllipseFit& fit) {
 /// brighter outwards.
 void find_reflection(const cv::Mat& grey, Rim& rim) {
   const double r = rim.ellipse.a_px;
-  const RadialEdges edges = radial_edges(grey, rim.centre.at, 120, 6);
+  const RadialEdges edges = radial_edges(grey, rim.centre.at, 120, 6, 1.0);
   const double within = std::max(0.8, 0.006 * r);
   std::vector<Candidate> circles =
       circles_in(edges, {std::max(3.0, 0.03 * r), 0.3 * r}, within, 1.0);
@@ -296,7 +375,7 @@ void find_reflection(const cv::Mat& grey, Rim& rim) {
     if (best == nullptr || c.support.share > best->support.share) best = &c;
   }
   if (best == nullptr) return;
-  const auto fine = refine(grey, best->circle, 2.0, edges.noise);
+  const auto fine = refine(grey, best->circle, 2.0, 3.0 * edges.noise);
   if (!fine || fine->seen < 0.5) return;
   rim.reflection = observed(fine->fit);
   rim.reflection_radius_px = fine->fit.ellipse.mean_radius_px();
@@ -319,7 +398,6 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
   const double scale_v = grey.rows / static_cast<double>(small.rows);
   cv::GaussianBlur(small, small, {}, 1.0);
   const ImagePoint middle{0.5 * (small.cols - 1), 0.5 * (small.rows - 1)};
-  const RadialEdges edges = radial_edges(small, middle, 180, 8);
   const double shorter = std::min(small.cols, small.rows);
   RadiusRange radius{0.2 * shorter, 0.75 * shorter};
   if (search.radius_px) {
@@ -328,18 +406,28 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
               (search.radius_px->value + slack) / scale_u};
   }
   constexpr double kWithinPx = 1.3;
-  const std::vector<Candidate> circles = circles_in(edges, radius, kWithinPx, 0.5);
-  const Candidate* edge = mirror_edge(small, circles);
-  if (edge == nullptr) return std::nullopt;
+  // Twice: faint arcs come out best when the rays start from their own centre.
+  std::optional<Ellipse> edge;
+  double noise = 0.0;
+  for (ImagePoint from = middle; const double spread_rays : {1.5, 3.0}) {
+    const RadialEdges edges = radial_edges(small, from, 240, 10, spread_rays);
+    const std::vector<Candidate> circles = circles_in(edges, radius, kWithinPx, 0.5);
+    const Candidate* found = mirror_edge(small, circles);
+    if (found == nullptr) break;
+    edge = found->circle;
+    noise = edges.noise;
+    from = edge->centre();
+  }
+  if (!edge) return std::nullopt;
 
-  Ellipse start = edge->circle;
+  Ellipse start = *edge;
   start.p[0] = (start.p[0] + 0.5) * scale_u - 0.5;
   start.p[1] = (start.p[1] + 0.5) * scale_v - 0.5;
   start.p[2] *= scale_u;
   start.p[3] *= scale_v;
   cv::Mat smooth;
   cv::GaussianBlur(grey, smooth, {}, 0.7);
-  const auto fine = refine(smooth, start, 4.0 * scale, edges.noise / scale);
+  const auto fine = refine(smooth, start, 3.0 * scale, 3.0 * noise / scale);
   if (!fine) return std::nullopt;
   Rim rim;
   rim.centre = observed(fine->fit);

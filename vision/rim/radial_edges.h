@@ -22,25 +22,36 @@ struct RadialEdges {
   std::vector<double> end_px;                 ///< where each ray leaves the image
   double noise = 0.0;                         ///< deviation of a step where nothing changes
 
-  [[nodiscard]] double azimuth_rad(std::size_t ray) const;
+  std::vector<double> cos_azimuth;  ///< of each ray
+  std::vector<double> sin_azimuth;
 };
 
 /// The strongest changes along each ray: at most `most` a ray, each over three times the noise.
+/// Steps are averaged over neighbouring rays (normal weights of `spread_rays`), which lifts faint
+/// arcs about `from` out of the noise and lowers what is no arc.
 ///   grey  CV_32FC1, smoothed a little
-[[nodiscard]] RadialEdges radial_edges(const cv::Mat& grey, ImagePoint from, int rays, int most);
+[[nodiscard]] RadialEdges radial_edges(
+    const cv::Mat& grey, ImagePoint from, int rays, int most, double spread_rays);
 
 /// Level at `at` between pixels (bilinear). `at` must be inside by a pixel.
 [[nodiscard]] double level_at(const cv::Mat& grey, ImagePoint at);
 
-/// For each of `rays` azimuths about the ellipse's centre the strongest change of level within
-/// `reach_px` of the ellipse, to a fraction of a pixel (parabola through the derivative's
-/// magnitudes). Rays without one, or whose window leaves the image, have no point.
-struct EdgePoint {
-  ImagePoint at;
-  double azimuth_rad = 0.0;
-  double step = 0.0;  ///< as in RadialEdge
+/// Places of changing level near an ellipse, along rays from its centre, to a fraction of a pixel
+/// (parabola through the derivative's magnitudes).
+struct NearEdges {
+  ImagePoint from;
+  std::vector<std::vector<RadialEdge>> rays;
+  std::vector<double>
+      start_px;  ///< the ellipse's own radius on each ray; negative: not in the image
+  std::vector<double> cos_azimuth;
+  std::vector<double> sin_azimuth;
 };
-[[nodiscard]] std::vector<EdgePoint> edges_near(
-    const cv::Mat& grey, const Ellipse& ellipse, double reach_px, int rays, double least_step);
+/// Within `reach_px` of the ellipse, all changes of at least `least_step` grey levels a px.
+[[nodiscard]] NearEdges edges_near(const cv::Mat& grey,
+                                   const Ellipse& ellipse,
+                                   double reach_px,
+                                   double least_step,
+                                   int rays,
+                                   double spread_rays);
 
 }  // namespace rondel::vision
