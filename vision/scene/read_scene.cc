@@ -17,8 +17,8 @@ constexpr Limits kAnywhere{-100.0, 100.0, false};
 constexpr Limits kShare{0.0, 1.0, false};
 constexpr Limits kSize{0.0, 100.0, true};
 constexpr Limits kSizeOrNone{0.0, 100.0, false};
-constexpr Limits kSizeMm{0.0, 100000.0, true};
-constexpr Limits kSizeOrNoneMm{0.0, 100000.0, false};
+constexpr Limits kSizeMm{0.0, 50000.0, true};
+constexpr Limits kSizeOrNoneMm{0.0, 50000.0, false};
 constexpr Limits kTurn{-360.0, 360.0, false};
 constexpr Limits kLux{0.0, 200000.0, false};
 constexpr Limits kKelvin{1700.0, 25000.0, false};
@@ -426,6 +426,9 @@ SceneFrame read_frame(const std::string& image, const YamlMap& map, const Scene&
 }  // namespace
 
 Scene parse_scene(const std::string& text, const std::string& file) {
+  if (text.find_first_not_of(" \t\r\n") == std::string::npos) {
+    throw InputError(file, "is empty; a scene names its lights: and frames: at least");
+  }
   std::vector<Problem> problems;
   const YamlMap map(text, file, problems);
   map.allow({"name",
@@ -476,11 +479,13 @@ Scene parse_scene(const std::string& text, const std::string& file) {
     for_each(map, "lights", [&](const std::string& name, const YamlMap& entry) {
       scene.lights.push_back(read_light(name, entry));
     });
+    if (scene.lights.empty() && problems.empty()) map.complain("lights", "name at least one light");
   }
   if (map.require("frames", "name at least one frame")) {
     for_each(map, "frames", [&](const std::string& image, const YamlMap& entry) {
       scene.frames.push_back(read_frame(image, entry, scene));
     });
+    if (scene.frames.empty() && problems.empty()) map.complain("frames", "name at least one frame");
   }
   if (const auto survey = map.map("survey")) {
     survey->allow(

@@ -8,6 +8,7 @@
 #include <numbers>
 #include <opencv2/imgcodecs.hpp>
 #include <thread>
+#include <utility>
 
 #include "vision/scene/body.h"
 #include "vision/scene/mirror.h"
@@ -215,6 +216,22 @@ FloorSpot spot_from(const Pose& pose, FloorPoint in_hall) {
   return {std::hypot(dx, dy), wrap_angle(std::atan2(dy, dx) - pose.heading_rad)};
 }
 
+/// The rays' places in a pixel, from its middle outwards: light is worked out where a surface is
+/// first seen, which shall be near the middle.
+std::vector<std::pair<double, double>> places_in_pixel(int across) {
+  std::vector<std::pair<double, double>> places;
+  for (int j = 0; j < across; ++j) {
+    for (int i = 0; i < across; ++i) {
+      places.emplace_back((2 * i + 1 - across) / (2.0 * across),
+                          (2 * j + 1 - across) / (2.0 * across));
+    }
+  }
+  std::stable_sort(places.begin(), places.end(), [](const auto& a, const auto& b) {
+    return a.first * a.first + a.second * a.second < b.first * b.first + b.second * b.second;
+  });
+  return places;
+}
+
 FrameTruth trace_frame(const Scene& scene,
                        std::size_t frame_index,
                        int threads,
@@ -235,6 +252,7 @@ FrameTruth trace_frame(const Scene& scene,
   if (linear != nullptr) *linear = cv::Mat(height, width, CV_32FC3);
 
   const int across = std::max(1, scene.sensor.supersample);
+  const std::vector<std::pair<double, double>> places = places_in_pixel(across);
   const std::size_t count = scene.objects.size();
   std::vector<std::vector<Tally>> rows(static_cast<std::size_t>(height), std::vector<Tally>(count));
   for_rows(height, threads, [&](int first, int end) {
@@ -244,33 +262,29 @@ FrameTruth trace_frame(const Scene& scene,
       auto* object_row = truth.objects.ptr<unsigned char>(v);
       auto* mask_row = truth.mask.ptr<unsigned char>(v);
       auto* colour_row = linear != nullptr ? linear->ptr<cv::Vec3f>(v) : nullptr;
+      Vec3 last_floor;
       for (int u = 0; u < width; ++u) {
         Tracer::Kept kept;
-        Vec3 last_floor;
         Vec3 sum;
         Ray middle;
-        for (int j = 0; j < across; ++j) {
-          for (int i = 0; i < across; ++i) {
-            const double du = (2 * i + 1 - across) / (2.0 * across);
-            const double dv = (2 * j + 1 - across) / (2.0 * across);
-            Vec3 colour;
-            const Ray ray = tracer.trace(
-                u + du, v + dv, linear != nullptr ? &colour : nullptr, &kept, &last_floor);
-            sum += colour;
-            if (2 * i + 1 == across && 2 * j + 1 == across) middle = ray;
-            for (std::uint64_t left = ray.ahead; left != 0; left &= left - 1) {
-              const auto k = static_cast<std::size_t>(__builtin_ctzll(left));
-              Tally& tally = tallies[k];
-              ++tally.ahead;
-              if (ray.object != static_cast<int>(k)) continue;
-              ++tally.seen;
-              tally.u += u + du;
-              tally.v += v + dv;
-              tally.u_low = tally.u_high < 0 ? u : std::min(tally.u_low, u);
-              tally.u_high = std::max(tally.u_high, u);
-              tally.v_low = tally.v_high < 0 ? v : std::min(tally.v_low, v);
-              tally.v_high = std::max(tally.v_high, v);
-            }
+        for (const auto& [du, dv] : places) {
+          Vec3 colour;
+          const Ray ray = tracer.trace(
+              u + du, v + dv, linear != nullptr ? &colour : nullptr, &kept, &last_floor);
+          sum += colour;
+          if (du == 0.0 && dv == 0.0) middle = ray;
+          for (std::uint64_t left = ray.ahead; left != 0; left &= left - 1) {
+            const auto k = static_cast<std::size_t>(__builtin_ctzll(left));
+            Tally& tally = tallies[k];
+            ++tally.ahead;
+            if (ray.object != static_cast<int>(k)) continue;
+            ++tally.seen;
+            tally.u += u + du;
+            tally.v += v + dv;
+            tally.u_low = tally.u_high < 0 ? u : std::min(tally.u_low, u);
+            tally.u_high = std::max(tally.u_high, u);
+            tally.v_low = tally.v_high < 0 ? v : std::min(tally.v_low, v);
+            tally.v_high = std::max(tally.v_high, v);
           }
         }
         if (across % 2 == 0) middle = tracer.trace(u, v, nullptr, &kept, &last_floor);
