@@ -19,6 +19,7 @@ struct LightSamples {
   std::string light;
   std::vector<RgbCounts> objects;  ///< one entry an object, in the venue's order; may be empty
   RgbCounts surroundings;
+  SensorNoise noise;  ///< of the frames; all zero: unknown
 };
 
 struct ChooseOptions {
@@ -29,6 +30,7 @@ struct ChooseOptions {
   double overlap_cap = 2e-3;         ///< share of each other object's pixels, all lights together
   double recall = 0.95;              ///< below it a second box is tried; edge of the envelope
   double middle_kelvin = 5800.0;     ///< colour temperature the frames stand for
+  bool per_light = false;            ///< also a set for each light, always
   BoxSearchOptions search;
 };
 
@@ -44,6 +46,21 @@ struct Envelope {
 inline constexpr std::array<double, 2> kEnvelopeStops = {-3.0, 3.0};
 inline constexpr std::array<double, 2> kEnvelopeKelvin = {2200.0, 12000.0};
 
+/// Where an object's colours in one light are those of something else in another.
+struct Collision {
+  std::string light, change;            ///< where the object loses most
+  std::string with;                     ///< "surroundings" or another object's name
+  std::string with_light, with_change;  ///< where that has the same colours
+  double share = 0.0;                   ///< of its pixels there that have them
+};
+
+/// What one light alone would allow.
+struct LightSet {
+  std::string light;
+  ThresholdSet set;
+  double score = 0.0;  ///< worst over the changes of this light
+};
+
 /// One object's set and what is known of it.
 struct ChosenSet {
   ThresholdSet set;
@@ -53,10 +70,15 @@ struct ChosenSet {
   std::string worst_change;
   double false_positive_rate = 0.0;
   double score = 0.0;  ///< worst over lights and changes
-  double bound =
-      0.0;  ///< no set with one box on the grid (with two: no other second box) scores more
-  double gap = 0.0;  ///< what an interrupted search has not settled
+  /// No set of one box on the grid scores more. With two boxes: no other second box beside either
+  /// of them does.
+  double bound = 0.0;
+  double gap = 0.0;            ///< what an interrupted search has not settled
+  double one_box_score = 0.0;  ///< what the best single box reaches
   Envelope envelope;
+  std::vector<Collision> collisions;  ///< only where `score` is below ChooseOptions::recall
+  std::vector<std::string> advice;    ///< what would help, with numbers; likewise
+  std::vector<LightSet> per_light;    ///< likewise, or where asked for
 };
 
 /// The best set of every object, in the order of LightSamples::objects. An object without a pixel

@@ -51,14 +51,21 @@ class HsvCounter {
  public:
   HsvCounter();
   void add(const RgbCounts& counts, const ColourShift& shift);
+  void add(const HsvCounts& counts);
   [[nodiscard]] HsvCounts take();
 
  private:
   std::vector<std::uint32_t> slots_;
 };
 
-/// `counts` after a change of light.
+/// `counts` after a change of light. Where that adds noise, a colour's pixels are shared out over
+/// up to kNoiseDraws results.
+inline constexpr std::uint32_t kNoiseDraws = 8;
 [[nodiscard]] HsvCounts shifted(const RgbCounts& counts, const ColourShift& shift);
+
+/// Every `n`-th colour of `counts`, so that at most `most` are left; their counts are made to stand
+/// for the rest.
+[[nodiscard]] RgbCounts thinned(const RgbCounts& counts, std::size_t most);
 
 /// Pixels of `counts` that are in the set.
 [[nodiscard]] std::uint64_t count_in(const HsvCounts& counts, const ThresholdSet& set);

@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numbers>
 
 namespace rondel::colour {
 
@@ -114,23 +115,94 @@ std::string text_of(const LightChange& change) {
   return text.empty() ? "as captured" : text;
 }
 
-ColourShift::ColourShift(const LightChange& change, bool rgb565) {
-  const double exposure = std::exp2(change.stops);
-  const auto fill = [&](std::array<std::uint8_t, 256>& table, double gain, unsigned bits) {
-    for (std::size_t k = 0; k < table.size(); ++k) {
-      const double linear = gain * exposure * linear_from_srgb(static_cast<double>(k) / 255.0);
-      const double coded = 255.0 * srgb_from_linear(std::min(1.0, linear));
-      auto value = static_cast<unsigned>(std::lround(coded));
-      if (rgb565) {
-        value >>= 8U - bits;
-        value = (value << (8U - bits)) | (value >> (2U * bits - 8U));
-      }
-      table[k] = static_cast<std::uint8_t>(value);
+namespace {
+
+/// Linear light 0..1 to 8 bits, in steps fine enough for the curve's steep foot.
+constexpr std::size_t kCurveSteps = 16384;
+const std::array<std::uint8_t, kCurveSteps + 1>& curve() {
+  static const auto table = [] {
+    std::array<std::uint8_t, kCurveSteps + 1> t{};
+    for (std::size_t k = 0; k < t.size(); ++k) {
+      const double linear = static_cast<double>(k) / static_cast<double>(kCurveSteps);
+      t[k] = static_cast<std::uint8_t>(std::lround(255.0 * srgb_from_linear(linear)));
     }
-  };
-  fill(red_, change.gains.red, 5);
-  fill(green_, 1.0, 6);
-  fill(blue_, change.gains.blue, 5);
+    return t;
+  }();
+  return table;
+}
+
+std::uint32_t scrambled(std::uint32_t x) {
+  x ^= x >> 16U;
+  x *= 0x7FEB352DU;
+  x ^= x >> 15U;
+  x *= 0x846CA68BU;
+  return x ^ (x >> 16U);
+}
+
+/// Standard normal numbers (Box and Muller 1958), picked from by hashes.
+constexpr std::size_t kNormals = 4096;
+const std::array<float, kNormals>& normals() {
+  static const auto table = [] {
+    std::array<float, kNormals> t{};
+    for (std::uint32_t k = 0; k < kNormals / 2; ++k) {
+      const double a = (scrambled(2 * k + 1) + 0.5) / 4294967296.0;
+      const double b = (scrambled(2 * k + 2) + 0.5) / 4294967296.0;
+      const double radius = std::sqrt(-2.0 * std::log(a));
+      t[2 * k] = static_cast<float>(radius * std::cos(2.0 * std::numbers::pi * b));
+      t[2 * k + 1] = static_cast<float>(radius * std::sin(2.0 * std::numbers::pi * b));
+    }
+    return t;
+  }();
+  return table;
+}
+
+std::uint8_t as_rgb565(std::uint8_t value, std::size_t channel) {
+  const unsigned bits = channel == 1 ? 6 : 5;
+  const unsigned kept = value >> (8U - bits);
+  return static_cast<std::uint8_t>((kept << (8U - bits)) | (kept >> (2U * bits - 8U)));
+}
+
+}  // namespace
+
+ColourShift::ColourShift(const LightChange& change, bool rgb565, const SensorNoise& noise)
+    : rgb565_{rgb565} {
+  const double exposure = std::exp2(change.stops);
+  const std::array<double, 3> gains = {change.gains.red, 1.0, change.gains.blue};
+  for (std::size_t c = 0; c < 3; ++c) {
+    const double gain = exposure * gains[c];
+    for (std::size_t k = 0; k < 256; ++k) {
+      const double before = linear_from_srgb(static_cast<double>(k) / 255.0);
+      const double after = gain * before;
+      plain_[c][k] = coded(after, c);
+      linear_[c][k] = static_cast<float>(after);
+      const double wanted = noise.read[c] + noise.shot[c] * after;
+      const double there = gain * gain * (noise.read[c] + noise.shot[c] * before);
+      sd_[c][k] = static_cast<float>(std::sqrt(std::max(0.0, wanted - there)));
+      noisy_ |= sd_[c][k] > 0.0F && k > 0;
+    }
+  }
+}
+
+std::uint8_t ColourShift::coded(double linear, std::size_t channel) const {
+  const double clipped = std::clamp(linear, 0.0, 1.0);
+  const auto level = static_cast<std::uint8_t>(std::lround(255.0 * srgb_from_linear(clipped)));
+  return rgb565_ ? as_rgb565(level, channel) : level;
+}
+
+Rgb ColourShift::with_noise(Rgb p, std::uint32_t draw) const {
+  const std::array<std::uint8_t, 3> in = {p.r, p.g, p.b};
+  std::array<std::uint8_t, 3> out{};
+  const std::uint32_t colour =
+      (std::uint32_t{p.r} << 16U) | (std::uint32_t{p.g} << 8U) | std::uint32_t{p.b};
+  std::uint32_t random = scrambled(colour ^ (draw * 0x9E3779B9U));
+  for (std::size_t c = 0; c < 3; ++c) {
+    const float linear = linear_[c][in[c]] + sd_[c][in[c]] * normals()[random % kNormals];
+    random = scrambled(random + 1U);
+    const float step = std::clamp(linear, 0.0F, 1.0F) * static_cast<float>(kCurveSteps);
+    const std::uint8_t level = curve()[static_cast<std::size_t>(step + 0.5F)];
+    out[c] = rgb565_ ? as_rgb565(level, c) : level;
+  }
+  return {out[0], out[1], out[2]};
 }
 
 }  // namespace rondel::colour

@@ -64,15 +64,37 @@ inline constexpr double kBalanceError = 1.06;
 /// "as captured", "+1 stop, 5000 K".
 [[nodiscard]] std::string text_of(const LightChange& change);
 
-/// A change as one table a channel: von Kries gains and exposure in linear light, clipped at full
-/// scale, coded again in 8 bits. With `rgb565` the result is what an RGB565 value stands for.
+/// A camera's noise, by channel (red, green, blue), in linear light where 1 fills the sensor:
+/// variance = read + shot * light. All zero: none is added.
+struct SensorNoise {
+  std::array<double, 3> read{};
+  std::array<double, 3> shot{};
+};
+
+/// A change of light done to 8-bit colours: von Kries gains and exposure in linear light, clipped
+/// at full scale, coded again in 8 bits. A frame made darker afterwards has less noise than one
+/// taken in the dark; where `noise` is known, the difference is added. With `rgb565` the result is
+/// what an RGB565 value stands for.
 class ColourShift {
  public:
-  ColourShift(const LightChange& change, bool rgb565);
-  [[nodiscard]] Rgb operator()(Rgb p) const { return {red_[p.r], green_[p.g], blue_[p.b]}; }
+  ColourShift(const LightChange& change, bool rgb565, const SensorNoise& noise = {});
+  /// Whether equal colours may come out differently.
+  [[nodiscard]] bool noisy() const { return noisy_; }
+  /// `draw` picks the noise: the same colour and draw give the same result.
+  [[nodiscard]] Rgb operator()(Rgb p, std::uint32_t draw = 0) const {
+    if (!noisy_) return {plain_[0][p.r], plain_[1][p.g], plain_[2][p.b]};
+    return with_noise(p, draw);
+  }
 
  private:
-  std::array<std::uint8_t, 256> red_{}, green_{}, blue_{};
+  [[nodiscard]] Rgb with_noise(Rgb p, std::uint32_t draw) const;
+  [[nodiscard]] std::uint8_t coded(double linear, std::size_t channel) const;
+
+  bool rgb565_ = false;
+  bool noisy_ = false;
+  std::array<std::array<std::uint8_t, 256>, 3> plain_{};
+  std::array<std::array<float, 256>, 3> linear_{};
+  std::array<std::array<float, 256>, 3> sd_{};
 };
 
 }  // namespace rondel::colour

@@ -76,7 +76,7 @@ TEST(BoxSearch, FindsWhatEnumerationFinds) {
   const Tiny tiny{5};
   int with_answer = 0;
   int wrapped = 0;
-  for (unsigned seed = 0; seed < 60; ++seed) {
+  for (unsigned seed = 0; seed < 30; ++seed) {
     std::mt19937 rng{seed};
     BoxProblem problem;
     for (int light = 0; light < 1 + static_cast<int>(seed % 3); ++light) {
@@ -102,8 +102,8 @@ TEST(BoxSearch, FindsWhatEnumerationFinds) {
     EXPECT_EQ(problem.score(*found.box), found.score) << "seed " << seed;
     EXPECT_TRUE(problem.allowed(*found.box)) << "seed " << seed;
   }
-  EXPECT_GT(with_answer, 40);
-  EXPECT_GT(wrapped, 5);
+  EXPECT_GT(with_answer, 20);
+  EXPECT_GT(wrapped, 2);
 }
 
 TEST(BoxSearch, TheSameColoursTurnedRoundTheHueCircleScoreTheSame) {
