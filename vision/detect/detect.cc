@@ -1,10 +1,14 @@
 #include "vision/detect/detect.h"
 
 #include <algorithm>
+#include <array>
 #include <cassert>
 #include <cmath>
 #include <cstring>
 #include <limits>
+#include <optional>
+
+#include "calib/colour/lights.h"
 
 namespace rondel::vision {
 namespace {
@@ -15,6 +19,7 @@ struct Run {
   int from = 0;
   int end = 0;  ///< one past the last
   int blob = 0;
+  int next = -1;  ///< another run of the same blob; -1: none
   std::uint8_t cls = 0;
 };
 
@@ -29,6 +34,7 @@ struct Sums {
   int bottom = -1;
   bool cut = false;
   std::uint8_t cls = 0;
+  int first_run = -1;
 
   void add(const Sums& other) {
     area += other.area;
@@ -105,7 +111,7 @@ std::vector<Run> label_runs(const colour::ClassTable& table,
         u += eight == 0 ? 8 : 1;
         continue;
       }
-      Run run{v, u, u + 1, -1, *at};
+      Run run{v, u, u + 1, -1, -1, *at};
       while (run.end < width && classes[static_cast<std::size_t>(run.end)] == run.cls) ++run.end;
       u = run.end;
       while (above < row_start && runs[above].end < run.from) ++above;
@@ -140,8 +146,7 @@ bool touches_edge(const Run& run, const cv::Mat& mask) {
 /// The blob's inner edge on the line from the centre to its centroid: the mean over the lines a
 /// pixel beside it of the nearest pixel's near side.
 ImagePoint inner_edge(const std::vector<Run>& runs,
-                      const std::vector<int>& blob_of,
-                      int blob,
+                      int first_run,
                       ImagePoint centre,
                       ImagePoint centroid) {
   const double du = centroid.u_px - centre.u_px;
@@ -153,8 +158,8 @@ ImagePoint inner_edge(const std::vector<Run>& runs,
   constexpr int kLines = 3;
   std::array<double, kLines> nearest{};
   nearest.fill(std::numeric_limits<double>::max());
-  for (const Run& run : runs) {
-    if (blob_of[static_cast<std::size_t>(run.blob)] != blob) continue;
+  for (int k = first_run; k >= 0; k = runs[static_cast<std::size_t>(k)].next) {
+    const Run& run = runs[static_cast<std::size_t>(k)];
     for (int u = run.from; u < run.end; ++u) {
       const double x = u - centre.u_px;
       const double y = run.v - centre.v_px;
@@ -217,16 +222,138 @@ bool size_fits(const DetectorSetup& setup, const ObjectSpec& object, const Blob&
   return blob.area_px <= 2.5 * expected + slack_px && blob.area_px + slack_px >= 0.1 * expected;
 }
 
+/// sRGB's curve (IEC 61966-2-1) for 8 bits, to linear light 0..1.
+const std::array<float, 256>& linear_light() {
+  static const auto table = [] {
+    std::array<float, 256> t{};
+    for (std::size_t k = 0; k < t.size(); ++k) {
+      t[k] = static_cast<float>(colour::linear_from_srgb(static_cast<double>(k) / 255.0));
+    }
+    return t;
+  }();
+  return table;
+}
+
+cv::Vec3f linear(const cv::Vec3b& bgr) {
+  const std::array<float, 256>& table = linear_light();
+  return {table[bgr[0]], table[bgr[1]], table[bgr[2]]};
+}
+
+/// The centroid with border pixels weighted by purity. The object's colour is the mean of the
+/// pixels inside the border, the background's that of the pixels two steps outside nearby. A pixel
+/// that is no mix of the two (another object, a line on the floor) counts as the class table has
+/// it.
+ImagePoint pure_centroid(const cv::Mat& bgr,
+                         const cv::Mat& mask,
+                         const std::vector<Run>& runs,
+                         int first_run,
+                         const cv::Rect& box) {
+  constexpr int kRim = 3;
+  const cv::Rect around =
+      cv::Rect(box.x - kRim, box.y - kRim, box.width + 2 * kRim, box.height + 2 * kRim) &
+      cv::Rect({}, bgr.size());
+  // 2: inside, 1: the blob's border, 0: outside.
+  const int stride = around.width + 2;
+  std::vector<std::uint8_t> state(static_cast<std::size_t>(stride * (around.height + 2)), 0);
+  const auto at = [&](int u, int v) {
+    return static_cast<std::size_t>((v - around.y + 1) * stride + (u - around.x + 1));
+  };
+  for (int k = first_run; k >= 0; k = runs[static_cast<std::size_t>(k)].next) {
+    const Run& run = runs[static_cast<std::size_t>(k)];
+    std::fill_n(state.begin() + static_cast<std::ptrdiff_t>(at(run.from, run.v)),
+                run.end - run.from,
+                std::uint8_t{1});
+  }
+  const auto width = static_cast<std::size_t>(stride);
+  cv::Vec3f own;
+  float count = 0.0F;
+  cv::Vec3f border;
+  float border_count = 0.0F;
+  for (int v = box.y; v < box.y + box.height; ++v) {
+    for (int u = box.x; u < box.x + box.width; ++u) {
+      const std::size_t k = at(u, v);
+      if (state[k] == 0) continue;
+      const bool inside =
+          state[k - 1] != 0 && state[k + 1] != 0 && state[k - width] != 0 && state[k + width] != 0;
+      if (inside) state[k] = 2;
+      (inside ? own : border) += linear(bgr.at<cv::Vec3b>(v, u));
+      (inside ? count : border_count) += 1.0F;
+    }
+  }
+  if (count == 0.0F) {
+    own = border;
+    count = border_count;
+  }
+  own *= 1.0F / count;
+
+  const auto touches_blob = [&](int u, int v) {
+    for (int dv = -1; dv <= 1; ++dv) {
+      for (int du = -1; du <= 1; ++du) {
+        if (state[at(u + du, v + dv)] != 0) return true;
+      }
+    }
+    return false;
+  };
+  // The background near (u, v): pixels that are neither the blob nor next to it.
+  const auto background = [&](int u, int v) -> std::optional<cv::Vec3f> {
+    cv::Vec3f sum;
+    float n = 0.0F;
+    for (int y = std::max(around.y, v - 2); y <= std::min(around.y + around.height - 1, v + 2);
+         ++y) {
+      for (int x = std::max(around.x, u - 2); x <= std::min(around.x + around.width - 1, u + 2);
+           ++x) {
+        if (mask.at<std::uint8_t>(y, x) == 0 || touches_blob(x, y)) continue;
+        sum += linear(bgr.at<cv::Vec3b>(y, x));
+        n += 1.0F;
+      }
+    }
+    if (n == 0.0F) return std::nullopt;
+    return sum * (1.0F / n);
+  };
+  const auto purity = [&](int u, int v, float otherwise) {
+    const auto behind = background(u, v);
+    if (!behind) return otherwise;
+    const cv::Vec3f full = own - *behind;
+    const cv::Vec3f here = linear(bgr.at<cv::Vec3b>(v, u)) - *behind;
+    const float square = full.dot(full);
+    if (square <= 0.0F) return otherwise;
+    const float share = here.dot(full) / square;
+    const cv::Vec3f rest = here - share * full;
+    if (rest.dot(rest) > 0.09F * square) return otherwise;
+    return std::clamp(share, 0.0F, 1.0F);
+  };
+  double sum = 0.0;
+  double sum_u = 0.0;
+  double sum_v = 0.0;
+  for (int v = std::max(around.y, box.y - 1);
+       v < std::min(around.y + around.height, box.y + box.height + 1);
+       ++v) {
+    for (int u = std::max(around.x, box.x - 1);
+         u < std::min(around.x + around.width, box.x + box.width + 1);
+         ++u) {
+      const std::uint8_t here = state[at(u, v)];
+      if (here == 0 && (mask.at<std::uint8_t>(v, u) == 0 || !touches_blob(u, v))) continue;
+      const auto weight =
+          static_cast<double>(here == 2 ? 1.0F : purity(u, v, here == 0 ? 0.0F : 1.0F));
+      sum += weight;
+      sum_u += weight * u;
+      sum_v += weight * v;
+    }
+  }
+  return {sum_u / sum, sum_v / sum};
+}
+
 }  // namespace
 
 std::vector<Blob> detect(const DetectorSetup& setup, const cv::Mat& bgr) {
   assert(bgr.type() == CV_8UC3 && setup.mask.type() == CV_8U && setup.mask.size() == bgr.size());
   Labels labels;
-  const std::vector<Run> runs = label_runs(setup.table, setup.mask, bgr, labels);
+  std::vector<Run> runs = label_runs(setup.table, setup.mask, bgr, labels);
   std::vector<int> blob_of(labels.size());
   std::vector<Sums> sums(labels.size());
   for (std::size_t k = 0; k < labels.size(); ++k) blob_of[k] = labels.root(static_cast<int>(k));
-  for (const Run& run : runs) {
+  for (std::size_t r = 0; r < runs.size(); ++r) {
+    Run& run = runs[r];
     Sums& sum = sums[static_cast<std::size_t>(blob_of[static_cast<std::size_t>(run.blob)])];
     const std::int64_t length = run.end - run.from;
     Sums one;
@@ -240,6 +367,8 @@ std::vector<Blob> detect(const DetectorSetup& setup, const cv::Mat& bgr) {
     one.cut = !sum.cut && touches_edge(run, setup.mask);
     sum.cls = run.cls;
     sum.add(one);
+    run.next = sum.first_run;
+    sum.first_run = static_cast<int>(r);
   }
   std::vector<Blob> blobs;
   for (std::size_t k = 0; k < sums.size(); ++k) {
@@ -248,16 +377,19 @@ std::vector<Blob> detect(const DetectorSetup& setup, const cv::Mat& bgr) {
     Blob blob;
     blob.object = sum.cls - 1;
     const auto area = static_cast<double>(sum.area);
-    blob.centroid = {static_cast<double>(sum.u) / area, static_cast<double>(sum.v) / area};
+    blob.plain_centroid = {static_cast<double>(sum.u) / area, static_cast<double>(sum.v) / area};
+    blob.centroid = blob.plain_centroid;
     blob.area_px = static_cast<int>(sum.area);
     blob.box = {sum.left, sum.top, sum.right - sum.left + 1, sum.bottom - sum.top + 1};
     blob.cut_by_mask = sum.cut;
     const ObjectSpec& object = setup.objects[static_cast<std::size_t>(blob.object)];
+    const bool ball = object.shape == Shape::ball;
     blob.measured =
-        object.shape == Shape::ball
-            ? blob.centroid
-            : inner_edge(runs, blob_of, static_cast<int>(k), setup.centre, blob.centroid);
-    if (size_fits(setup, object, blob)) blobs.push_back(blob);
+        ball ? blob.centroid : inner_edge(runs, sum.first_run, setup.centre, blob.centroid);
+    if (!size_fits(setup, object, blob)) continue;
+    blob.centroid = pure_centroid(bgr, setup.mask, runs, sum.first_run, blob.box);
+    if (ball) blob.measured = blob.centroid;
+    blobs.push_back(blob);
   }
   std::stable_sort(blobs.begin(), blobs.end(), [](const Blob& a, const Blob& b) {
     return a.object != b.object ? a.object < b.object : a.area_px > b.area_px;

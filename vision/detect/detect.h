@@ -12,8 +12,11 @@ namespace rondel::vision {
 
 /// One connected patch of one object's colour.
 struct Blob {
-  int object = 0;       ///< index into the venue's objects
-  ImagePoint centroid;  ///< sub-pixel
+  int object = 0;  ///< index into the venue's objects
+  /// Of the blob with its border: pixels there count by how much of the object they show (the mix
+  /// of the blob's and the background's colour in linear light).
+  ImagePoint centroid;
+  ImagePoint plain_centroid;  ///< of the blob's pixels, all alike
   ImagePoint measured;  ///< what stands for the object: centroid of a ball, foot of a box, ...
   int area_px = 0;
   cv::Rect box;
