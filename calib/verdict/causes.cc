@@ -18,7 +18,7 @@ namespace {
 /// A cause is named when chance alone would do as well less often than this.
 constexpr double kSignificance = 0.02;
 /// Criteria closer than this cannot be told apart: odds of exp(kApart / 2).
-constexpr double kApart = 5.0;
+constexpr double kApart = 3.5;
 /// A knock that moves places by less than this (RMS) is not worth naming.
 constexpr double kLeastShiftPx = 0.12;
 /// An odd row beside the cause itself: chance of it among rows that are right.
