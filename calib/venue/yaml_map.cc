@@ -73,10 +73,9 @@ YAML::Node parsed(std::string_view text, const std::string& file, std::vector<Pr
 
 std::string text_of(const Limits& limits) {
   if (limits.above_low) {
-    return fmt::format(
-        "must be above {} and at most {}", number_text(limits.low), number_text(limits.high));
+    return fmt::format("must be above {:.15g} and at most {:.15g}", limits.low, limits.high);
   }
-  return fmt::format("must be from {} to {}", number_text(limits.low), number_text(limits.high));
+  return fmt::format("must be from {:.15g} to {:.15g}", limits.low, limits.high);
 }
 
 YamlMap::YamlMap(std::string_view text, std::string file, std::vector<Problem>& problems)
@@ -114,6 +113,13 @@ YAML::Node YamlMap::at(std::string_view key) const {
     if (entry.first.IsScalar() && entry.first.Scalar() == key) return entry.second;
   }
   return YAML::Node(YAML::NodeType::Undefined);
+}
+
+int YamlMap::line_of_key(const YAML::Node& value) const {
+  for (const auto& entry : node_) {
+    if (entry.second.is(value)) return line_of(entry.first);
+  }
+  return line_of(value);
 }
 
 void YamlMap::add(const YAML::Node& node, const std::string& path, std::string_view what) const {
@@ -165,7 +171,7 @@ std::optional<std::string> YamlMap::scalar(const YAML::Node& node,
   if (!node.IsDefined()) return std::nullopt;
   if (node.IsNull()) {
     problems_->push_back(
-        {fmt::format("{}:{}", file_, line_of(node)),
+        {fmt::format("{}:{}", file_, line_of_key(node)),
          fmt::format("{}: has no value; it {}, or remove the line", path, must_be)});
     return std::nullopt;
   }
@@ -331,7 +337,7 @@ std::optional<YamlMap> YamlMap::map(std::string_view key) const {
   if (!node.IsDefined()) return std::nullopt;
   if (node.IsNull()) {
     problems_->push_back(
-        {fmt::format("{}:{}", file_, line_of(node)),
+        {fmt::format("{}:{}", file_, line_of_key(node)),
          fmt::format("{}: has no value; write its keys below it, or remove the line",
                      path_of(key))});
     return std::nullopt;

@@ -76,6 +76,8 @@ class YamlMap {
  private:
   YamlMap(const YamlMap& parent, YAML::Node node, std::string path);
   [[nodiscard]] YAML::Node at(std::string_view key) const;
+  /// The line of the key that `value` belongs to; a missing value has no line of its own.
+  [[nodiscard]] int line_of_key(const YAML::Node& value) const;
   void add(const YAML::Node& node, const std::string& path, std::string_view what) const;
   [[nodiscard]] std::optional<std::string> scalar(const YAML::Node& node,
                                                   const std::string& path,

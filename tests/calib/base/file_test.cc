@@ -52,6 +52,20 @@ TEST(WriteFile, ReplacesWholeAndLeavesNothingBeside) {
   EXPECT_EQ(files, 1);
 }
 
+TEST(WriteNewFile, LeavesAloneWhatIsThere) {
+  const auto folder = std::filesystem::path(testing::TempDir()) / "write_new_file_test";
+  std::filesystem::remove_all(folder);
+  EXPECT_TRUE(write_new_file(folder / "a.txt", "first"));
+  EXPECT_FALSE(write_new_file(folder / "a.txt", "second"));
+  EXPECT_EQ(read_file(folder / "a.txt"), "first");
+  // A link that leads nowhere is there too.
+  std::filesystem::create_symlink("nowhere", folder / "link");
+  EXPECT_FALSE(write_new_file(folder / "link", "third"));
+  int files = 0;
+  for ([[maybe_unused]] const auto& entry : std::filesystem::directory_iterator(folder)) ++files;
+  EXPECT_EQ(files, 2);
+}
+
 TEST(ReadFile, NamesWhatCannotBeRead) {
   try {
     (void)read_file("/nowhere/marks.csv");
