@@ -111,6 +111,23 @@ class ModelFit {
     fitted.used.assign(n, 1);
     make_marks(1.0);
     params_ = model_->start();
+    // A curve of k free numbers needs k marks, and one more to be held against.
+    std::vector<std::string> shape;
+    for (const Parameter& p : model_->parameters()) {
+      if (p.prior != Parameter::Prior::known && p.name != "eye_height_m" &&
+          p.name != "heading_rad") {
+        shape.push_back(p.shown_name);
+      }
+    }
+    if (!shape.empty() && n < shape.size() + 1) {
+      return refuse(fitted,
+                    fmt::format("{} cannot be told apart by {} mark{}; it takes at least {}, at "
+                                "different ranges, or a drawing in rig.yaml",
+                                fmt::join(shape, ", "),
+                                n,
+                                n == 1 ? "" : "s",
+                                shape.size() + 1));
+    }
     for (std::size_t i = 0; i < n; ++i)
       fitted.used[i] = marks_[i]->linear(*model_, params_) ? 1 : 0;
     if (n > 0 && !settle(fitted)) return fitted;
@@ -139,6 +156,7 @@ class ModelFit {
     p.start = params_;
     p.scale = scale_;
     p.cauchy = cauchy;
+    p.tolerance = cauchy > 0.0 ? 1e-5 : 1e-9;  // of what is a few tens: far below one deviation
     p.terms.push_back(prior_term(*model_));
     for (const auto& seen : frame_) {
       if (seen->linear(*model_, params_)) p.terms.push_back(seen->term(*model_, params_));

@@ -112,9 +112,9 @@ LeastSquaresSolution solve(const LeastSquaresProblem& problem) {
   }
   options.linear_solver_type = any_latent ? ceres::DENSE_SCHUR : ceres::DENSE_QR;
   options.max_num_iterations = problem.most_iterations;
-  options.function_tolerance = 1e-14;
-  options.gradient_tolerance = 1e-14;
-  options.parameter_tolerance = 1e-12;
+  options.function_tolerance = problem.tolerance;
+  options.gradient_tolerance = 1e-20;
+  options.parameter_tolerance = problem.tolerance < 1e-12 ? 1e-15 : 1e-10;
   options.num_threads = 1;
   options.logging_type = ceres::SILENT;
   ceres::Solver::Summary summary;

@@ -30,6 +30,7 @@ struct LeastSquaresProblem {
   std::vector<Term> terms;
   double cauchy = 0.0;  ///< scale of the Cauchy loss on robust terms; 0: plain squares
   int most_iterations = 100;
+  double tolerance = 1e-20;  ///< relative change of the sum of squares at which it is enough
 };
 
 struct LeastSquaresSolution {

@@ -34,12 +34,21 @@ class MarkObservation final : public Observation {
                                                                Eigen::MatrixXd* by_latent) {
       const double range = mark_.range_m + range_sd_ * latent[0];
       const double b = b0 + turn_sd_ * latent[1];
-      const auto seen = model.project(shared, to_point({range, b}), mark_.height_m);
+      const FloorPoint place = to_point({range, b});
+      const auto fill = [&](ImagePoint at) {
+        residual[0] = (at.u_px - mark_.pixel.u_px) / pixel_sd_;
+        residual[1] = (at.v_px - mark_.pixel.v_px) / pixel_sd_;
+        residual[2] = latent[0];
+        if (mark_.bearing_rad) residual[3] = latent[1];
+      };
+      if (by_shared == nullptr && by_latent == nullptr) {
+        const auto at = model.pixel(shared, place, mark_.height_m);
+        if (at) fill(*at);
+        return at.has_value();
+      }
+      const auto seen = model.project(shared, place, mark_.height_m);
       if (!seen) return false;
-      residual[0] = (seen->at.u_px - mark_.pixel.u_px) / pixel_sd_;
-      residual[1] = (seen->at.v_px - mark_.pixel.v_px) / pixel_sd_;
-      residual[2] = latent[0];
-      if (mark_.bearing_rad) residual[3] = latent[1];
+      fill(seen->at);
       if (by_shared != nullptr) {
         by_shared->setZero();
         by_shared->topRows(2) = seen->by_params / pixel_sd_;
