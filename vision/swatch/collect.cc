@@ -136,7 +136,7 @@ void each_pixel(const cv::Mat& area, const cv::Mat& bgr, const Visit& visit) {
 
 constexpr int kLeastLookAlikePx = 8;
 /// A patch more than so many times as large as the largest labelled one is no object.
-constexpr int kLargestOverLabelled = 4;
+constexpr int kLargestOverLabelled = 30;
 
 /// Patches of object `o`'s colours in one frame. What belongs to an object is added to `left_out`.
 void find_look_alikes(const Painted& one,
@@ -176,7 +176,7 @@ void find_look_alikes(const Painted& one,
   for (int label = 1; label < count; ++label) {
     const auto k = static_cast<std::size_t>(label);
     const int area = stats.at<int>(label, cv::CC_STAT_AREA);
-    if (area > kLargestOverLabelled * largest_px || 2 * tight_px[k] < area) continue;
+    if (area > kLargestOverLabelled * largest_px || 4 * tight_px[k] < area) continue;
     if (touches[k] != 0) {
       out[k] = 1;
     } else if (area >= kLeastLookAlikePx && 2 * explained[k] < area) {
