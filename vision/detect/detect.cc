@@ -182,6 +182,70 @@ ImagePoint inner_edge(const std::vector<Run>& runs,
   return {centre.u_px + edge * cu, centre.v_px + edge * cv};
 }
 
+/// Linear interpolation between pixel centres; the nearest edge outside.
+cv::Vec3f sampled(const cv::Mat& bgr, double u, double v) {
+  const double uu = std::clamp(u, 0.0, bgr.cols - 1.001);
+  const double vv = std::clamp(v, 0.0, bgr.rows - 1.001);
+  const auto u0 = static_cast<int>(uu);
+  const auto v0 = static_cast<int>(vv);
+  const auto fu = static_cast<float>(uu - u0);
+  const auto fv = static_cast<float>(vv - v0);
+  const auto at = [&](int x, int y) { return cv::Vec3f(bgr.at<cv::Vec3b>(y, x)); };
+  return (1.0F - fv) * ((1.0F - fu) * at(u0, v0) + fu * at(u0 + 1, v0)) +
+         fv * ((1.0F - fu) * at(u0, v0 + 1) + fu * at(u0 + 1, v0 + 1));
+}
+
+/// The inner edge to a fraction of a pixel: thresholds refuse pixels in which object and floor mix,
+/// so the edge that they find lies too far out; where the colour is half way between the object's
+/// and the floor's is the edge. Averaged over lines beside the one through `coarse`.
+ImagePoint refined_edge(const cv::Mat& bgr, ImagePoint centre, ImagePoint coarse, double depth_px) {
+  const double du = coarse.u_px - centre.u_px;
+  const double dv = coarse.v_px - centre.v_px;
+  const double edge = std::hypot(du, dv);
+  if (edge < 8.0) return coarse;
+  const double cu = du / edge;
+  const double cv = dv / edge;
+  constexpr double kReach = 4.0;
+  constexpr double kStep = 0.25;
+  constexpr int kHalf = static_cast<int>(kReach / kStep);
+  std::array<cv::Vec3f, 2 * kHalf + 1> profile{};
+  for (int k = -kHalf; k <= kHalf; ++k) {
+    cv::Vec3f sum(0.0F, 0.0F, 0.0F);
+    for (int line = -1; line <= 1; ++line) {
+      const double along = edge + k * kStep;
+      sum +=
+          sampled(bgr, centre.u_px + along * cu - line * cv, centre.v_px + along * cv + line * cu);
+    }
+    profile[static_cast<std::size_t>(k + kHalf)] = sum / 3.0F;
+  }
+  const auto mean = [&](double from, double to) {
+    cv::Vec3f sum(0.0F, 0.0F, 0.0F);
+    int n = 0;
+    for (int k = -kHalf; k <= kHalf; ++k) {
+      if (k * kStep < from || k * kStep > to) continue;
+      sum += profile[static_cast<std::size_t>(k + kHalf)];
+      ++n;
+    }
+    return sum / static_cast<float>(n);
+  };
+  const double inside = std::clamp(0.6 * depth_px, 0.75, 3.0);
+  const cv::Vec3f floor = mean(-kReach, -2.5);
+  const cv::Vec3f object = mean(inside - 0.5, inside + 0.5);
+  const cv::Vec3f apart = object - floor;
+  const float square = apart.dot(apart);
+  if (square < 400.0F) return coarse;  // no contrast to go by
+  double last = 1.0;
+  for (int k = static_cast<int>(inside / kStep); k >= -kHalf; --k) {
+    const double share = (profile[static_cast<std::size_t>(k + kHalf)] - floor).dot(apart) / square;
+    if (share < 0.5) {
+      const double at = edge + (k + (0.5 - share) / (last - share)) * kStep;
+      return {centre.u_px + at * cu, centre.v_px + at * cv};
+    }
+    last = share;
+  }
+  return coarse;
+}
+
 /// Whether a blob's area fits the object at the range where it is seen. A ball's outline is known;
 /// of a box or post only the width is, so that bounds are wide. What is cut or half hidden is
 /// small.
@@ -388,7 +452,13 @@ std::vector<Blob> detect(const DetectorSetup& setup, const cv::Mat& bgr) {
         ball ? blob.centroid : inner_edge(runs, sum.first_run, setup.centre, blob.centroid);
     if (!size_fits(setup, object, blob)) continue;
     blob.centroid = pure_centroid(bgr, setup.mask, runs, sum.first_run, blob.box);
-    if (ball) blob.measured = blob.centroid;
+    if (ball) {
+      blob.measured = blob.centroid;
+    } else {
+      const double depth = 2.0 * std::hypot(blob.plain_centroid.u_px - blob.measured.u_px,
+                                            blob.plain_centroid.v_px - blob.measured.v_px);
+      blob.measured = refined_edge(bgr, setup.centre, blob.measured, depth);
+    }
     blobs.push_back(blob);
   }
   std::stable_sort(blobs.begin(), blobs.end(), [](const Blob& a, const Blob& b) {
