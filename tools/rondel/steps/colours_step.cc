@@ -1,12 +1,15 @@
 #include <fmt/format.h>
 
 #include <algorithm>
+#include <cmath>
 #include <filesystem>
 #include <set>
 
 #include "calib/base/file.h"
 #include "calib/base/problem.h"
+#include "calib/colour/board_scale.h"
 #include "calib/colour/choose.h"
+#include "calib/colour/planes.h"
 #include "calib/colour/sets_file.h"
 #include "tools/rondel/frames.h"
 #include "tools/rondel/results.h"
@@ -87,13 +90,39 @@ ordered_json json_of(const std::optional<std::array<double, 2>>& range) {
   return range ? ordered_json{(*range)[0], (*range)[1]} : ordered_json{};
 }
 
-ordered_json json_of(const colour::ChosenSet& chosen) {
+ordered_json boxes_json(const colour::ThresholdSet& set) {
   ordered_json boxes = ordered_json::array();
-  for (const colour::HsvBox& box : chosen.set.boxes) {
+  for (const colour::HsvBox& box : set.boxes) {
     boxes.push_back({{"h", {box.h.from, box.h.to}}, {"s", box.s}, {"v", box.v}});
   }
+  return boxes;
+}
+
+double recall_in(const colour::ChosenSet& chosen, const std::string& light) {
+  for (const auto& [name, recall] : chosen.recall_by_light) {
+    if (name == light) return recall;
+  }
+  return 0.0;
+}
+
+ordered_json json_of(const colour::ChosenSet& chosen) {
   const colour::Envelope& envelope = chosen.envelope;
-  return {{"boxes", boxes},
+  ordered_json collisions = ordered_json::array();
+  for (const colour::Collision& one : chosen.collisions) {
+    collisions.push_back({{"light", light_name(one.light)},
+                          {"change", one.change},
+                          {"with", one.with},
+                          {"with_light", light_name(one.with_light)},
+                          {"with_change", one.with_change},
+                          {"share", one.share}});
+  }
+  ordered_json per_light = ordered_json::object();
+  for (const colour::LightSet& one : chosen.per_light) {
+    per_light[light_name(one.light)] = {{"boxes", boxes_json(one.set)},
+                                        {"score", one.score},
+                                        {"gain", one.score - recall_in(chosen, one.light)}};
+  }
+  return {{"boxes", boxes_json(chosen.set)},
           {"recall_by_light", json_of(chosen.recall_by_light)},
           {"recall_as_captured", json_of(chosen.recall_as_captured)},
           {"worst_light", light_name(chosen.worst_light)},
@@ -105,7 +134,45 @@ ordered_json json_of(const colour::ChosenSet& chosen) {
           {"envelope",
            {{"stops", json_of(envelope.stops)},
             {"kelvin", json_of(envelope.kelvin)},
-            {"broken_by", envelope.broken_by}}}};
+            {"broken_by", envelope.broken_by}}},
+          {"one_box_score", chosen.one_box_score},
+          {"collisions", collisions},
+          {"advice", chosen.advice},
+          {"per_light", per_light}};
+}
+
+template <class Grid>
+ordered_json grid_json(const Grid& grid) {
+  ordered_json rows = ordered_json::array();
+  for (const auto& row : grid) {
+    ordered_json cells = ordered_json::array();
+    for (const auto value : row)
+      cells.push_back(std::round(1000.0 * static_cast<double>(value)) / 1000.0);
+    rows.push_back(std::move(cells));
+  }
+  return rows;
+}
+
+/// What the report and the desk draw: densities, and the envelope as a map.
+ordered_json pictures_of(const std::vector<colour::LightSamples>& lights,
+                         const std::vector<colour::ChosenSet>& sets,
+                         const colour::ChooseOptions& options) {
+  std::vector<const colour::RgbCounts*> around;
+  for (const colour::LightSamples& light : lights) around.push_back(&light.surroundings);
+  const colour::Planes surroundings = colour::planes_of(around);
+  ordered_json out = ordered_json::object();
+  for (std::size_t o = 0; o < sets.size(); ++o) {
+    std::vector<const colour::RgbCounts*> own;
+    for (const colour::LightSamples& light : lights) own.push_back(&light.objects[o]);
+    const colour::Planes object = colour::planes_of(own);
+    const colour::EnvelopeMap map = colour::envelope_map(lights, o, sets[o].set, options);
+    out[sets[o].set.object] = {
+        {"hs", {{"object", grid_json(object.hs)}, {"surroundings", grid_json(surroundings.hs)}}},
+        {"sv", {{"object", grid_json(object.sv)}, {"surroundings", grid_json(surroundings.sv)}}},
+        {"envelope_map",
+         {{"stops", map.stops}, {"kelvin", map.kelvin}, {"recall", grid_json(map.recall)}}}};
+  }
+  return out;
 }
 
 std::string summary_of(const colour::ChosenSet& chosen) {
@@ -128,7 +195,18 @@ std::string summary_of(const colour::ChosenSet& chosen) {
   } else {
     text += "; too few for the wanted recall even as captured";
   }
-  return text + '\n';
+  text += '\n';
+  for (const colour::Collision& one : chosen.collisions) {
+    text += fmt::format("  in {} ({}) it looks like {} in {} ({}): {} of that\n",
+                        light_name(one.light),
+                        one.change,
+                        one.with == kSurroundings ? "the surroundings" : one.with,
+                        light_name(one.with_light),
+                        one.with_change,
+                        percent(one.share));
+  }
+  for (const std::string& advice : chosen.advice) text += "  " + advice + '\n';
+  return text;
 }
 
 void note_look_alikes(const Workspace& workspace,
@@ -192,6 +270,7 @@ Outcome colours_step(const Workspace& workspace, Progress& progress) {
   options.false_positive_cap = venue.false_positive_cap;
   options.recall = venue.tolerance.recall;
   options.middle_kelvin = colour::middle_kelvin(venue.lighting);
+  options.per_light = !venue.lights.empty();
   options.search.stop = [&] { return progress.cancelled(); };
   const std::vector<colour::ChosenSet> sets =
       colour::choose_sets(labelled.lights, names, options, progress);
@@ -211,6 +290,12 @@ Outcome colours_step(const Workspace& workspace, Progress& progress) {
                            {"area_px", one.area_px}});
   }
   outcome.document = {{"objects", objects}, {"unlabelled", look_alikes}};
+  ordered_json details = outcome.document;
+  details["pictures"] = pictures_of(labelled.lights, sets, options);
+  std::vector<colour::ThresholdSet> plain;
+  for (const colour::ChosenSet& chosen : sets) plain.push_back(chosen.set);
+  write_file(workspace.results() / "colours.json", details.dump());
+  write_file(workspace.results() / "colours.csv", colour::sets_csv(plain, venue.hsv_scale));
   write_file(workspace.results() / "colours.yaml",
              with_made_from(colour::sets_yaml(sets), inputs_of(workspace, "colours")));
   return outcome;
