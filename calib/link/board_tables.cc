@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cassert>
+#include <cmath>
 #include <cstddef>
 #include <cstdlib>
 
@@ -21,10 +22,8 @@ Offset from_centre(const BoardTables& tables, int u_sub, int v_sub) {
   return {u - tables.centre_u_sub, v - tables.centre_v_sub};
 }
 
-std::uint32_t square(Offset d) { return static_cast<std::uint32_t>(d.u * d.u + d.v * d.v); }
-
-std::int32_t slow(const std::array<std::int16_t, 3>& c, std::int32_t s) {
-  return c[0] + (((c[1] + ((c[2] * s) >> 16)) * s) >> 8);
+std::int32_t slow(const std::array<std::int8_t, 2>& c, std::int32_t s) {
+  return c[0] + ((c[1] * s) >> 7);
 }
 
 /// The displacement at (u, v), both from pixel (0, 0), bilinear in integers.
@@ -46,29 +45,30 @@ Offset displacement(const RangeLayout& layout, std::int32_t u, std::int32_t v) {
   return {blend(0), blend(1)};
 }
 
-/// What the range is looked up by, and the direction of the bearing.
+/// q = steps + bend 2^(near_shift - edge_shift), and the direction of the bearing.
 struct Straight {
-  std::uint32_t square = 0;
+  std::int32_t steps = 0;
+  std::int32_t bend = 0;
   Offset direction;
 };
 Straight straighten(const BoardTables& tables, const RangeLayout& layout, Offset d) {
-  Straight out{square(d), d};
-  if (layout.kind == Straightening::none) return out;
+  Straight out{0, 0, d};
   if (layout.kind == Straightening::grid) {
     const Offset move = displacement(layout, d.u + tables.centre_u_sub, d.v + tables.centre_v_sub);
     out.direction = {d.u + move.u, d.v + move.v};
-    out.square = square(out.direction);
-    return out;
   }
+  // Each square is shifted on its own, as 8-bit boards do it.
+  out.steps = ((out.direction.u * out.direction.u) >> layout.edge_shift) +
+              ((out.direction.v * out.direction.v) >> layout.edge_shift);
+  if (layout.kind == Straightening::none || layout.kind == Straightening::grid) return out;
   const std::int32_t s =
-      std::min(static_cast<std::int32_t>(out.square >> tables.slow_shift), tables.slow_most);
-  out.direction.u += slow(layout.harmonic[2], s) >> 8;
-  out.direction.v += slow(layout.harmonic[3], s) >> 8;
+      std::min(out.steps >> (tables.slow_shift - layout.edge_shift), tables.slow_most);
+  out.direction.u += slow(layout.harmonic[2], s);
+  out.direction.v += slow(layout.harmonic[3], s);
   if (layout.kind == Straightening::harmonic) {
-    const std::int32_t bend =
-        (slow(layout.harmonic[0], s) * d.u + slow(layout.harmonic[1], s) * d.v) >> 8;
-    const auto q = static_cast<std::int32_t>(out.square) + bend;
-    out.square = q < 0 ? 0U : static_cast<std::uint32_t>(q);
+    const std::int32_t half = (1 << tables.near_shift) >> 1;
+    out.bend = slow(layout.harmonic[0], s) * ((d.u + half) >> tables.near_shift) +
+               slow(layout.harmonic[1], s) * ((d.v + half) >> tables.near_shift);
   }
   return out;
 }
@@ -81,10 +81,19 @@ int bearing_code(const BoardTables& tables, Offset d) {
   auto along = static_cast<std::uint32_t>(std::abs(x));
   const bool steep = across > along;
   if (steep) std::swap(across, along);
-  // How many cells' ends lie at or below the slope.
+  // With 8-bit tangents the slope is taken by the upper 8 bits of its denominator.
+  const bool eight = tables.tangent_bits == 8;
+  if (eight) {
+    if (along == 0) return 0;
+    while (along < 32768U) {
+      along <<= 1;
+      across <<= 1;
+    }
+  }
+  // How many cells' ends lie below the slope.
   const auto end = std::partition_point(
       tables.tangents.begin(), tables.tangents.end(), [&](std::uint16_t tangent) {
-        return ((along * tangent) >> 16) < across;
+        return (eight ? (along >> 8) * tangent : (along * tangent) >> 16) < across;
       });
   auto cell = static_cast<int>(end - tables.tangents.begin());
   const int half = tables.link.bearing_codes << tables.fine_log2 >> 1;  // cells to half a turn
@@ -101,14 +110,14 @@ int bearing_code(const BoardTables& tables, Offset d) {
 
 int table_bytes(const RangeLayout& layout) {
   int bytes = static_cast<int>(layout.edges.size()) * (layout.wide ? 4 : 2);
-  if (layout.kind == Straightening::harmonic) bytes += 8 * (layout.degree + 1);
-  if (layout.kind == Straightening::sectors) bytes += 4 * (layout.degree + 1);
+  if (layout.kind == Straightening::harmonic) bytes += 8;
+  if (layout.kind == Straightening::sectors) bytes += 4;
   bytes += static_cast<int>(layout.grid.size());
   return bytes;
 }
 
 int table_bytes(const BoardTables& tables) {
-  int bytes = 2 * static_cast<int>(tables.tangents.size());
+  int bytes = static_cast<int>(tables.tangents.size()) * tables.tangent_bits / 8;
   for (const RangeLayout& layout : tables.layouts) bytes += table_bytes(layout);
   return bytes;
 }
@@ -122,11 +131,14 @@ int class_bytes(const BoardTables& tables) {
   return static_cast<int>(tables.classes.classes.size()) * class_bits(tables) / 8;
 }
 
-std::uint32_t straightened_square(const BoardTables& tables,
-                                  const RangeLayout& layout,
-                                  int u_sub,
-                                  int v_sub) {
-  return straighten(tables, layout, from_centre(tables, u_sub, v_sub)).square;
+double straightened_square(const BoardTables& tables,
+                           const RangeLayout& layout,
+                           int u_sub,
+                           int v_sub) {
+  RangeLayout fine = layout;
+  fine.edge_shift = 0;
+  const Straight at = straighten(tables, fine, from_centre(tables, u_sub, v_sub));
+  return std::max(0.0, at.steps + std::ldexp(at.bend, tables.near_shift));
 }
 
 Codes encode(const BoardTables& tables, int object, int u_sub, int v_sub) {
@@ -135,8 +147,8 @@ Codes encode(const BoardTables& tables, int object, int u_sub, int v_sub) {
       tables.objects[static_cast<std::size_t>(object)].layout)];
   const Straight at = straighten(tables, layout, from_centre(tables, u_sub, v_sub));
   const int bearing = bearing_code(tables, at.direction);
-  std::uint32_t q = at.square >> layout.edge_shift;
-  if (!layout.wide) q = std::min(q, 65535U);
+  const int by = layout.edge_shift - tables.near_shift;
+  const std::int32_t q = std::max(0, at.steps + (by >= 0 ? at.bend >> by : at.bend * (1 << -by)));
   const auto codes = static_cast<std::ptrdiff_t>(tables.range_units.size());
   std::ptrdiff_t sector = 0;
   if (layout.kind == Straightening::sectors) {
@@ -145,7 +157,9 @@ Codes encode(const BoardTables& tables, int object, int u_sub, int v_sub) {
     sector = static_cast<std::ptrdiff_t>(static_cast<std::uint32_t>(bearing) * step >> 16);
   }
   const auto first = layout.edges.begin() + sector * codes;
-  return {static_cast<int>(std::upper_bound(first, first + codes, q) - first), bearing};
+  return {static_cast<int>(std::upper_bound(first, first + codes, static_cast<std::uint32_t>(q)) -
+                           first),
+          bearing};
 }
 
 Codes not_seen(const BoardTables& tables) { return {tables.not_seen_code(), 0}; }

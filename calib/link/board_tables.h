@@ -31,10 +31,11 @@ inline constexpr int kMostPixels = 2048;
 ///
 /// `d` is the position from the centre in 1/kSubpixel px, q what is looked up:
 ///   none      q = d^2
-///   harmonic  q = d^2 + (A(s) d_u + B(s) d_v) / 256, s = d^2 >> slow_shift; the direction of the
-///             bearing is d + (E(s), F(s)) / 256; s stays at slow_most where d^2 is larger. A..F
-///             are polynomials: first-harmonic corrections of tilt and decentring which grow with
-///             the radius.
+///   harmonic  q = d^2 + (A(s) n_u + B(s) n_v) 2^near_shift, n = d / 2^near_shift rounded to 8
+///   bits,
+///             s = d^2 >> slow_shift in 8 bits; the direction of the bearing is d + (E(s), F(s)).
+///             A..F are c[0] + (c[1] s >> 7): first-harmonic corrections of tilt and decentring
+///             which grow with the radius.
 ///   sectors   as harmonic for the bearing; q = d^2 with breakpoints of its own in each sector
 ///   grid      d is first moved by a displacement, bilinear between the nodes of a coarse grid;
 ///             q = d^2 and the bearing are taken from the moved d
@@ -44,10 +45,9 @@ enum class Straightening : std::uint8_t { none, harmonic, sectors, grid };
 struct RangeLayout {
   Straightening kind = Straightening::none;
 
-  /// Coefficients of A, B, E, F: c[0] + ((c[1] + ((c[2] * s) >> 16)) * s >> 8). `degree` 1 or 2;
-  /// unused ones are 0.
-  int degree = 1;
-  std::array<std::array<std::int16_t, 3>, 4> harmonic{};
+  /// Coefficients of A, B, E, F; A and B in 1/kSubpixel px of twice a displacement, E and F of a
+  /// displacement. All four fit 8 bits at every s.
+  std::array<std::array<std::int8_t, 2>, 4> harmonic{};
 
   int sectors = 1;  ///< a power of two
 
@@ -57,7 +57,8 @@ struct RangeLayout {
   int grid_rows = 0;
   std::vector<std::int8_t> grid;
 
-  /// q is shifted right by this before it is compared; 16 bits are left unless `wide`.
+  /// Breakpoints are of q >> edge_shift: 16 bits, 15 where `harmonic`; 32 bits and no shift where
+  /// `wide`.
   int edge_shift = 0;
   bool wide = false;
   /// `sectors` runs of one breakpoint per range code, ascending: the code is how many are <= q; all
@@ -103,16 +104,19 @@ struct BoardTables {
   // From pixel to code.
   int centre_u_sub = 0;  ///< 1/kSubpixel px
   int centre_v_sub = 0;
-  int slow_shift = 8;  ///< s = d^2 >> slow_shift, at most slow_most
-  int slow_most = 32767;
+  int near_shift = 4;
+  int slow_shift = 12;
+  int slow_most = 255;  ///< s goes no higher
   /// Image axes to robot axes: x = (c d_u + s d_v) >> 8, y = +-(c d_v - s d_u) >> 8, the minus
   /// where not `mirrored`. The length of (c, s) is free.
   std::int16_t turn_c = 0;
   std::int16_t turn_s = 0;
   bool mirrored = true;
-  /// Tangents of the fine bearing cells' ends in the first octant, 16 fraction bits; there are
-  /// 2^fine_log2 fine cells to a bearing code, so that 8 divides their number.
+  /// Tangents of the fine bearing cells' ends in the first octant, `tangent_bits` (8 or 16)
+  /// fraction bits; there are 2^fine_log2 fine cells to a bearing code, so that 8 divides their
+  /// number.
   int fine_log2 = 0;
+  int tangent_bits = 8;
   std::vector<std::uint16_t> tangents;
   std::vector<BoardObject> objects;  ///< in the venue's order
   std::vector<RangeLayout> layouts;  ///< one for each height
@@ -141,11 +145,11 @@ struct BoardTables {
 [[nodiscard]] Codes encode(const BoardTables& tables, int object, int u_sub, int v_sub);
 [[nodiscard]] Codes not_seen(const BoardTables& tables);
 
-/// What is compared with the layout's breakpoints at a position, before the shift.
-[[nodiscard]] std::uint32_t straightened_square(const BoardTables& tables,
-                                                const RangeLayout& layout,
-                                                int u_sub,
-                                                int v_sub);
+/// q at a position without the roundings of the shift.
+[[nodiscard]] double straightened_square(const BoardTables& tables,
+                                         const RangeLayout& layout,
+                                         int u_sub,
+                                         int v_sub);
 
 /// Of a bearing code: 1/100 degree, -17999 .. 18000, as the drive board gets it.
 [[nodiscard]] int bearing_cdeg(const BoardTables& tables, int bearing_code);

@@ -95,9 +95,8 @@ class Reader {
 
 void put_layout(Writer& out, const RangeLayout& layout) {
   out.put(static_cast<std::uint8_t>(layout.kind));
-  out.put(layout.degree);
   for (const auto& polynomial : layout.harmonic) {
-    for (const std::int16_t c : polynomial) out.put(c);
+    for (const std::int8_t c : polynomial) out.put(c);
   }
   out.put(layout.sectors);
   out.put(layout.grid_log2_px);
@@ -114,9 +113,8 @@ RangeLayout get_layout(Reader& in, int range_codes) {
   const auto kind = in.get<std::uint8_t>();
   in.need(kind <= static_cast<std::uint8_t>(Straightening::grid), "unknown layout");
   layout.kind = static_cast<Straightening>(kind);
-  layout.degree = in.whole(1, 2, "degree");
   for (auto& polynomial : layout.harmonic) {
-    for (std::int16_t& c : polynomial) c = in.get<std::int16_t>();
+    for (std::int8_t& c : polynomial) c = in.get<std::int8_t>();
   }
   layout.sectors = in.whole(1, 64, "sectors");
   in.need(std::has_single_bit(static_cast<unsigned>(layout.sectors)), "sectors");
@@ -170,12 +168,14 @@ std::vector<std::uint8_t> pack(const BoardTables& tables) {
   out.put_all(tables.range_units);
   out.put(tables.centre_u_sub);
   out.put(tables.centre_v_sub);
+  out.put(tables.near_shift);
   out.put(tables.slow_shift);
   out.put(tables.slow_most);
   out.put(tables.turn_c);
   out.put(tables.turn_s);
   out.put(tables.mirrored);
   out.put(tables.fine_log2);
+  out.put(tables.tangent_bits);
   out.put_all(tables.tangents);
   out.put(static_cast<std::uint32_t>(tables.layouts.size()));
   for (const RangeLayout& layout : tables.layouts) put_layout(out, layout);
@@ -247,12 +247,14 @@ BoardTables unpack(std::span<const std::uint8_t> bytes, const std::string& name)
   in.need(tables.range_codes() == range_codes(link), "number of range codes");
   tables.centre_u_sub = in.whole(-8 * kMostPixels, 16 * kMostPixels, "centre");
   tables.centre_v_sub = in.whole(-8 * kMostPixels, 16 * kMostPixels, "centre");
+  tables.near_shift = in.whole(0, 15, "shift");
   tables.slow_shift = in.whole(0, 31, "shift");
-  tables.slow_most = in.whole(0, 32767, "slow variable");
+  tables.slow_most = in.whole(0, 255, "slow variable");
   tables.turn_c = in.get<std::int16_t>();
   tables.turn_s = in.get<std::int16_t>();
   tables.mirrored = in.get<std::uint8_t>() != 0;
   tables.fine_log2 = in.whole(0, 3, "bearing cells");
+  tables.tangent_bits = in.whole(8, 16, "tangents");
   tables.tangents = in.all<std::uint16_t>();
   const std::size_t layouts = in.count(64);
   for (std::size_t i = 0; i < layouts; ++i)

@@ -1,6 +1,7 @@
 #include <fmt/format.h>
 
 #include <cmath>
+#include <set>
 
 #include "calib/link/link_plan.h"
 #include "tools/firmware/common.h"
@@ -13,40 +14,21 @@ namespace {
 using link::RangeLayout;
 using link::Straightening;
 
-/// `a * u + b * v` of 16-bit names and constants, as 32 bits; zero terms are left out.
-std::string sum_of_products(std::int32_t a, const char* u, std::int32_t b, const char* v) {
-  const auto term = [](std::int32_t factor, const char* name) {
-    return factor == 0 ? std::string() : fmt::format("(int32_t)({}) * {}", factor, name);
-  };
-  const std::string first = term(a, u);
-  const std::string second = term(b, v);
-  if (first.empty() && second.empty()) return "(int32_t)0";
-  return first.empty() ? second : second.empty() ? first : fmt::format("{} + {}", first, second);
+bool is_zero(const std::array<std::int8_t, 2>& c) { return c[0] == 0 && c[1] == 0; }
+
+/// A slow polynomial of `s` as an 8-bit expression.
+std::string slow_expression(const std::array<std::int8_t, 2>& c) {
+  if (c[1] == 0) return fmt::format("(int8_t)({})", c[0]);
+  return fmt::format("(int8_t)({} + ((int16_t)((int8_t)({}) * s) >> 7))", c[0], c[1]);
 }
 
-bool is_zero(const std::array<std::int16_t, 3>& c) { return c[0] == 0 && c[1] == 0 && c[2] == 0; }
-
-/// A slow polynomial of `s` as a 16-bit expression.
-std::string slow_expression(const std::array<std::int16_t, 3>& c) {
-  if (c[1] == 0 && c[2] == 0) return fmt::format("(int16_t)({})", c[0]);
-  const std::string inner =
-      c[2] == 0 ? fmt::format("(int32_t)({})", c[1])
-                : fmt::format(
-                      "(int32_t)(int16_t)({} + (int16_t)(((int32_t)({}) * s) >> 16))", c[1], c[2]);
-  return fmt::format("(int16_t)({} + (int16_t)(({} * s) >> 8))", c[0], inner);
-}
-
-/// x or y of the direction in the robot's axes: (c * u + s * v) >> 8, products by powers of two as
-/// shifts of 16 bits.
-std::string turned(std::int32_t a, const char* u, std::int32_t b, const char* v) {
-  if (a == 0 || b == 0) {
-    const std::int32_t factor = a == 0 ? b : a;
-    const std::int32_t size = std::abs(factor) / 256;
-    if (factor % 256 == 0) {
-      return fmt::format("(int16_t)({} * {})", factor < 0 ? -size : size, a == 0 ? v : u);
-    }
+/// x or y of the direction in the robot's axes: (c * u + s * v) >> 8 of the position, or the scaled
+/// one (`pu`, `pv`) as it is where that is all the factors do.
+std::string turned(std::int32_t a, std::int32_t b, std::int32_t scale) {
+  if ((a == 0 && std::abs(b) == 256 * scale) || (b == 0 && std::abs(a) == 256 * scale)) {
+    return fmt::format("{}{}", a + b < 0 ? "-" : "", a == 0 ? "pv" : "pu");
   }
-  return fmt::format("(int16_t)(({}) >> 8)", sum_of_products(a, u, b, v));
+  return fmt::format("((int32_t)({}) * du + (int32_t)({}) * dv) >> 8", a, b);
 }
 
 std::string layout_code(const link::BoardTables& tables, std::size_t index) {
@@ -111,75 +93,130 @@ static inline @p@_codes @p@_encode_@i@(int16_t u_sub, int16_t v_sub) {
 )",
                  values);
   }
-  code += "  uint32_t square = (uint32_t)((int32_t)du * du) + (uint32_t)((int32_t)dv * dv);\n";
-  if (harmonic || layout.kind == Straightening::sectors) {
-    values.emplace_back("slow_shift", std::to_string(tables.slow_shift));
+  const std::int32_t scale = 1 << (8 - tables.near_shift);
+  const bool quarter = tables.turn_c == 0 || tables.turn_s == 0;
+  const char* steps = layout.wide ? "uint32_t" : "uint16_t";
+  code += fmt::format("  const {0} steps = ({0})({1}_square{2}(du) + {1}_square{2}(dv));\n",
+                      steps,
+                      identifier(tables.prefix),
+                      layout.edge_shift);
+  bool slow = false;
+  for (const auto& c : layout.harmonic) slow = slow || c[1] != 0;
+  if (slow) {
+    const int by = tables.slow_shift - layout.edge_shift;
+    values.emplace_back("by", std::to_string(by));
+    values.emplace_back("limit", std::to_string(((tables.slow_most + 1) << by) - 1));
     values.emplace_back("slow_most", std::to_string(tables.slow_most));
-    code += fill(R"(  int16_t s = (int16_t)(square >> @slow_shift@);
-  if (s > @slow_most@) s = @slow_most@;
+    code += fill(R"(  const uint8_t s = steps > @limit@u ? @slow_most@u : (uint8_t)(steps >> @by@);
 )",
                  values);
-    if (harmonic && !(is_zero(layout.harmonic[0]) && is_zero(layout.harmonic[1]))) {
-      std::string bend;
-      for (const std::size_t axis : {std::size_t{0}, std::size_t{1}}) {
-        if (is_zero(layout.harmonic[axis])) continue;
-        if (!bend.empty()) bend += " +\n      ";
-        bend += fmt::format(
-            "(int32_t){} * {}", slow_expression(layout.harmonic[axis]), axis == 0 ? "du" : "dv");
-      }
-      code += fmt::format(
-          "  const int32_t bent = (int32_t)square + (({}) >> 8);\n"
-          "  square = bent < 0 ? 0u : (uint32_t)bent;\n",
-          bend);
-    }
-    for (const std::size_t axis : {std::size_t{0}, std::size_t{1}}) {
-      const auto& c = layout.harmonic[axis + 2];
-      if (is_zero(c)) continue;
-      code += fmt::format(
-          "  {0} = (int16_t)({0} + ({1} >> 8));\n", axis == 0 ? "du" : "dv", slow_expression(c));
-    }
+  }
+  std::string bend;
+  for (const std::size_t axis : {std::size_t{0}, std::size_t{1}}) {
+    if (!harmonic || is_zero(layout.harmonic[axis])) continue;
+    if (!bend.empty()) bend += " +\n      ";
+    bend += fmt::format("{} * (int8_t)({} >> 8)",
+                        slow_expression(layout.harmonic[axis]),
+                        axis == 0 ? "(int16_t)(pu + 128)" : "(int16_t)(pv + 128)");
+  }
+  if (!bend.empty() || quarter) {
+    const bool moved = quarter && !(is_zero(layout.harmonic[2]) && is_zero(layout.harmonic[3]));
+    code += fmt::format(
+        "  {0}int16_t pu = (int16_t)(du * {1});\n  {0}int16_t pv = (int16_t)(dv * {1});\n",
+        moved ? "" : "const ",
+        scale);
+  }
+  if (bend.empty()) {
+    code += fmt::format("  const {} q = steps;\n", steps);
+  } else {
+    const int by = layout.edge_shift - tables.near_shift;
+    const char* sum = layout.wide ? "int32_t" : "int16_t";
+    code += fmt::format("  const int16_t bend = (int16_t)({});\n", bend);
+    code += fmt::format(
+        "  const {0} bent = ({0})(({0})steps + {1});\n",
+        sum,
+        by >= 0 ? fmt::format("(bend >> {})", by) : fmt::format("(int32_t)bend * {}", 1 << -by));
+    code += fmt::format("  const {0} q = bent < 0 ? 0u : ({0})bent;\n", steps);
+  }
+  for (const std::size_t axis : {std::size_t{0}, std::size_t{1}}) {
+    const auto& c = layout.harmonic[axis + 2];
+    if (is_zero(c)) continue;
+    const char* name = quarter ? (axis == 0 ? "pu" : "pv") : (axis == 0 ? "du" : "dv");
+    const std::int32_t factor = quarter ? scale : 1;
+    code += c[1] == 0
+                ? fmt::format("  {0} = (int16_t)({0} + {1});\n", name, c[0] * factor)
+                : fmt::format(
+                      "  {0} = (int16_t)({0} + {1} * {2});\n", name, slow_expression(c), factor);
   }
   const int sign = tables.mirrored ? 1 : -1;
-  code += fmt::format("  codes.bearing = {}_bearing({},\n      {});\n",
+  code += fmt::format("  codes.bearing = {}_bearing((int16_t)({}),\n      (int16_t)({}));\n",
                       identifier(tables.prefix),
-                      turned(tables.turn_c, "du", tables.turn_s, "dv"),
-                      turned(-sign * tables.turn_s, "du", sign * tables.turn_c, "dv"));
-  if (layout.wide) {
-    code += fmt::format("  const uint32_t q = square >> {};\n", layout.edge_shift);
-  } else {
-    code += fmt::format("  const uint32_t steps = square >> {};\n", layout.edge_shift);
-    code += "  const uint16_t q = steps > 65535u ? 65535u : (uint16_t)steps;\n";
-  }
+                      turned(tables.turn_c, tables.turn_s, scale),
+                      turned(-sign * tables.turn_s, sign * tables.turn_c, scale));
   std::string first = fmt::format("{}_edges_{}", identifier(tables.prefix), index);
   if (layout.kind == Straightening::sectors) {
     code += fmt::format(
-        "  const uint16_t sector = (uint16_t)(((uint32_t)codes.bearing * {}u) >> 16);\n",
+        "  const uint16_t sector = (uint16_t)(((uint32_t)codes.bearing * {}UL) >> 16);\n",
         (layout.sectors << 16) / tables.link.bearing_codes);
     first += fmt::format(" + sector * {}u", tables.range_codes());
   }
-  code += fmt::format("  codes.range = {}_count{}({}, {}u, q);\n  return codes;\n}}\n",
+  code += fmt::format("  codes.range = ({0}_code){0}_count{1}({2}, q);\n  return codes;\n}}\n",
                       identifier(tables.prefix),
                       layout.wide ? "32" : "16",
-                      first,
-                      tables.range_codes());
+                      first);
   return code;
 }
 
+std::string square_code(const link::BoardTables& tables, int shift, bool wide) {
+  Values values = common_values(tables);
+  values.emplace_back("shift", std::to_string(shift));
+  values.emplace_back("bits", wide ? "32" : "16");
+  if (shift == 8 && !wide) {
+    return fill(R"(
+/* d^2 >> 8, from products of bytes. */
+static inline uint16_t @p@_square8(int16_t d) {
+  const uint16_t size = (uint16_t)(d < 0 ? -d : d);
+  const uint8_t high = (uint8_t)(size >> 8);
+  const uint8_t low = (uint8_t)size;
+  return (uint16_t)(((uint16_t)(high * high) << 8) + 2u * (uint16_t)(high * low) +
+                    ((uint16_t)(low * low) >> 8));
+}
+)",
+                values);
+  }
+  return fill(R"(
+static inline uint@bits@_t @p@_square@shift@(int16_t d) {
+  return (uint@bits@_t)((uint32_t)((int32_t)d * d) >> @shift@);
+}
+)",
+              values);
+}
+
+/// The largest power of two that is at most n.
+int power_below(int n) {
+  int p = 1;
+  while (2 * p <= n) p *= 2;
+  return p;
+}
+
 std::string search_code(const link::BoardTables& tables, const char* bits) {
+  const int power = power_below(tables.range_codes());
   Values values = common_values(tables);
   values.emplace_back("bits", bits);
+  values.emplace_back("last", std::to_string(power - 1));
+  values.emplace_back("rest", std::to_string(tables.range_codes() - power + 1));
+  values.emplace_back("half", std::to_string(power / 2));
+  values.emplace_back("step", power <= 256 ? "uint8_t" : "uint16_t");
+  values.emplace_back("count", std::to_string(tables.range_codes()));
   return fill(R"(
-/* How many of `count` ascending breakpoints are at most q. */
-static inline uint16_t @p@_count@bits@(const uint@bits@_t *first, uint16_t count, uint@bits@_t q) {
+/* How many of @count@ ascending breakpoints are at most q: halving, for any number of them. */
+static inline uint16_t @p@_count@bits@(const uint@bits@_t *first, uint@bits@_t q) {
   const uint@bits@_t *at = first;
-  while (count != 0u) {
-    const uint16_t half = (uint16_t)(count >> 1);
-    if (@P@_ROM@bits@(at + half) <= q) {
-      at += half + 1;
-      count = (uint16_t)(count - half - 1);
-    } else {
-      count = half;
-    }
+  @step@ step;
+  if (@P@_ROM@bits@(at + @last@) <= q) at += @rest@;
+  for (step = @half@; step != 0u; step = (@step@)(step >> 1)) {
+    const uint@bits@_t *next = at + step;
+    if (@P@_ROM@bits@(next - 1) <= q) at = next;
   }
   return (uint16_t)(at - first);
 }
@@ -190,74 +227,84 @@ static inline uint16_t @p@_count@bits@(const uint@bits@_t *first, uint16_t count
 std::string bearing_code(const link::BoardTables& tables) {
   const int half = tables.link.bearing_codes << tables.fine_log2 >> 1;
   const int offset = tables.fine_log2 == 0 ? 0 : 1;
+  const int count = static_cast<int>(tables.tangents.size());
+  const int power = count > 0 ? power_below(count) : 0;
   Values values = common_values(tables);
-  values.emplace_back("count", std::to_string(tables.tangents.size()));
+  values.emplace_back("bits", std::to_string(tables.tangent_bits));
+  values.emplace_back("count", std::to_string(count));
   values.emplace_back("tangents", number_lines(tables.tangents));
+  values.emplace_back("last", std::to_string(power - 1));
+  values.emplace_back("rest", std::to_string(count - power + 1));
+  values.emplace_back("first_half", std::to_string(power / 2));
+  values.emplace_back("step", power <= 256 ? "uint8_t" : "uint16_t");
+  values.emplace_back("cell", 2 * half <= 255 ? "uint8_t" : "uint16_t");
   values.emplace_back("quarter", std::to_string(half / 2 - offset));
   values.emplace_back("half", std::to_string(half - offset));
   values.emplace_back("full", std::to_string(2 * half - offset));
   values.emplace_back("round", std::to_string((1 << tables.fine_log2) >> 1));
   values.emplace_back("fine", std::to_string(tables.fine_log2));
-  const bool empty = tables.tangents.empty();
+  const bool eight = tables.tangent_bits == 8;
   std::string code;
-  if (!empty) {
+  if (count > 0) {
     code = fill(R"(
-/* Tangents of the ends of the bearing cells in the first eighth of a turn, 16 fraction bits. */
-static const uint16_t @p@_tangents[@count@] @P@_ROM = {
+/* Tangents of the ends of the bearing cells in the first eighth of a turn, @bits@ fraction bits. */
+static const uint@bits@_t @p@_tangents[@count@] @P@_ROM = {
 @tangents@};
 )",
                 values);
   }
+  values.emplace_back("product",
+                      eight ? fill("(uint16_t)((uint16_t)slope * @P@_ROM8(", values)
+                            : fill("(uint16_t)(((uint32_t)along * @P@_ROM16(", values));
+  values.emplace_back("close", eight ? "))" : ")) >> 16)");
   code += fill(R"(
 /* The bearing code of direction (x, y) in the robot's axes: folded into the first eighth of a turn,
  * looked up by slope there, unfolded. */
-static inline uint16_t @p@_bearing(int16_t x, int16_t y) {
+static inline @p@_code @p@_bearing(int16_t x, int16_t y) {
   uint16_t along = (uint16_t)(x < 0 ? -x : x);
   uint16_t across = (uint16_t)(y < 0 ? -y : y);
-  const uint8_t steep = across > along;
-  uint16_t cell = 0;
-  if (steep) {
+  @cell@ cell = 0;
+  uint8_t steep = 0;
+  if (across > along) {
     const uint16_t other = along;
     along = across;
     across = other;
+    steep = 1;
   }
 )",
                values);
-  if (!empty) {
-    code += fill(R"(  {
-    const uint16_t *at = @p@_tangents;
-    uint8_t count = @count@;
-    while (count != 0u) {
-      const uint8_t half = count >> 1;
-      if ((uint16_t)(((uint32_t)along * @P@_ROM16(at + half)) >> 16) < across) {
-        at += half + 1;
-        count = (uint8_t)(count - half - 1);
-      } else {
-        count = half;
-      }
+  if (count > 0) {
+    if (eight) {
+      code +=
+          "  if (along == 0u) return 0;\n"
+          "  while (!(along & 0x8000u)) {\n"
+          "    along = (uint16_t)(along << 1);\n"
+          "    across = (uint16_t)(across << 1);\n"
+          "  }\n";
     }
-    cell = (uint16_t)(at - @p@_tangents);
+    code += "  {\n";
+    if (eight) code += "    const uint8_t slope = (uint8_t)(along >> 8);\n";
+    code += fill(R"(    const uint@bits@_t *at = @p@_tangents;
+    @step@ step;
+    if (@product@at + @last@@close@ < across) at += @rest@;
+    for (step = @first_half@; step != 0u; step = (@step@)(step >> 1)) {
+      const uint@bits@_t *next = at + step;
+      if (@product@next - 1@close@ < across) at = next;
+    }
+    cell = (@cell@)(at - @p@_tangents);
   }
 )",
                  values);
-    if (tables.tangents.size() > 255) {
-      for (std::size_t at = 0; (at = code.find("uint8_t count", at)) != std::string::npos; ++at)
-        code.replace(at, 7, "uint16_t");
-      for (std::size_t at = 0; (at = code.find("const uint8_t half", at)) != std::string::npos;
-           ++at)
-        code.replace(at + 6, 7, "uint16_t");
-      for (std::size_t at = 0; (at = code.find("(uint8_t)(count", at)) != std::string::npos; ++at)
-        code.replace(at + 1, 7, "uint16_t");
-    }
   }
-  code += fill(R"(  if (steep) cell = (uint16_t)(@quarter@u - cell);
-  if (x < 0) cell = (uint16_t)(@half@u - cell);
-  if (y < 0) cell = (uint16_t)(@full@u - cell);
+  code += fill(R"(  if (steep) cell = (@cell@)(@quarter@ - cell);
+  if (x < 0) cell = (@cell@)(@half@ - cell);
+  if (y < 0) cell = (@cell@)(@full@ - cell);
 )",
                values);
-  if (tables.fine_log2 > 0)
-    code += fill("  cell = (uint16_t)((cell + @round@u) >> @fine@);\n", values);
-  return code + fill("  return cell >= @P@_BEARINGS ? (uint16_t)(cell - @P@_BEARINGS) : cell;\n}\n",
+  if (tables.fine_log2 > 0) {
+    code += fill("  cell = (@cell@)((cell + @round@u) >> @fine@);\n", values);
+  }
+  return code + fill("  return (@p@_code)(cell >= @P@_BEARINGS ? cell - @P@_BEARINGS : cell);\n}\n",
                      values);
 }
 
@@ -458,6 +505,12 @@ std::string camera_header(const link::BoardTables& tables) {
   if (narrow) out += search_code(tables, "16");
   if (wide) out += search_code(tables, "32");
   out += bearing_code(tables);
+  std::set<int> shifts;
+  for (const RangeLayout& layout : tables.layouts) {
+    if (shifts.insert(layout.edge_shift).second) {
+      out += square_code(tables, layout.edge_shift, layout.wide);
+    }
+  }
   for (std::size_t i = 0; i < tables.layouts.size(); ++i) out += layout_code(tables, i);
   out += fill(R"(
 /* Codes of object number `object` measured at (u_sub, v_sub), 1/8 px. */

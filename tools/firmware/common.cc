@@ -48,6 +48,8 @@ std::vector<std::string> about(const link::BoardTables& tables) {
 
 std::string c_common(const link::BoardTables& tables) {
   Values values = common_values(tables);
+  const bool small = tables.link.range_bits <= 8 && tables.link.bearing_codes <= 256;
+  values.emplace_back("code", small ? "uint8_t" : "uint16_t");
   values.emplace_back("beyond", std::to_string(tables.beyond_code()));
   values.emplace_back("not_seen", std::to_string(tables.not_seen_code()));
   values.emplace_back("objects", std::to_string(tables.objects.size()));
@@ -91,9 +93,10 @@ std::string c_common(const link::BoardTables& tables) {
 #define @P@_ROM32(at) (*(at))
 #endif
 
+typedef @code@ @p@_code;
 typedef struct {
-  uint16_t range;   /* range code */
-  uint16_t bearing; /* bearing code */
+  @p@_code range;
+  @p@_code bearing;
 } @p@_codes;
 
 #endif /* @P@_COMMON */

@@ -100,7 +100,7 @@ static inline uint8_t @p@_take(@p@_line *line, uint8_t byte) {
     const std::string low = at == 0 ? "at[0] & 127u" : fmt::format("at[{}]", at);
     if (bytes == 2) {
       get += fmt::format(
-          "  codes.{} = (uint16_t)(((uint16_t)({}) << 7) | at[{}]);\n", field, low, at + 1);
+          "  codes.{} = (@p@_code)(((uint16_t)({}) << 7) | at[{}]);\n", field, low, at + 1);
     } else {
       get += fmt::format("  codes.{} = {};\n", field, low);
     }
@@ -109,7 +109,7 @@ static inline uint8_t @p@_take(@p@_line *line, uint8_t byte) {
   take("bearing", report.bearing_bytes);
   take("range", report.range_bytes);
   values.emplace_back("per", std::to_string(per_object));
-  values.emplace_back("get", get);
+  values.emplace_back("get", fill(get, values));
   out += fill(R"(
 /* Codes of object number `object` in the last report. */
 static inline @p@_codes @p@_codes_of(const @p@_line *line, uint8_t object) {

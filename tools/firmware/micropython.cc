@@ -23,7 +23,7 @@ std::vector<std::uint8_t> little_endian(const std::vector<std::uint16_t>& values
 std::string layout_line(const RangeLayout& layout) {
   static constexpr const char* kKinds[] = {"none", "harmonic", "sectors", "grid"};
   std::string harmonic;
-  for (const auto& c : layout.harmonic) harmonic += fmt::format("({}, {}, {}), ", c[0], c[1], c[2]);
+  for (const auto& c : layout.harmonic) harmonic += fmt::format("({}, {}), ", c[0], c[1]);
   std::vector<std::uint8_t> edges;
   for (const std::uint32_t e : layout.edges) {
     for (int i = 0; i < (layout.wide ? 4 : 2); ++i)
@@ -73,6 +73,8 @@ std::string micropython_module(const link::BoardTables& tables) {
   add("not_seen", tables.not_seen_code());
   add("cu", tables.centre_u_sub);
   add("cv", tables.centre_v_sub);
+  add("near_shift", tables.near_shift);
+  add("near_half", (1 << tables.near_shift) >> 1);
   add("slow_shift", tables.slow_shift);
   add("slow_most", tables.slow_most);
   add("c", tables.turn_c);
@@ -98,7 +100,20 @@ std::string micropython_module(const link::BoardTables& tables) {
             "            crc = ((crc << 1) ^ (7 if crc & 128 else 0)) & 255\n"
             "    return bytes([crc >> 7, crc & 127])"
           : "    return b''");
-  add("tangents", python_bytes(little_endian(tables.tangents)));
+  add("tangents_count", tables.tangents.size());
+  if (tables.tangent_bits == 8) {
+    add("product", "slope * _tangents[at]");
+    add("normal",
+        "    if not along:\n        return 0\n"
+        "    while along < 32768:\n        along <<= 1\n        across <<= 1\n"
+        "    slope = along >> 8\n");
+    add("tangents",
+        python_bytes(std::vector<std::uint8_t>(tables.tangents.begin(), tables.tangents.end())));
+  } else {
+    add("product", "(along * (_tangents[2 * at] | _tangents[2 * at + 1] << 8)) >> 16");
+    add("normal", "");
+    add("tangents", python_bytes(little_endian(tables.tangents)));
+  }
   add("ranges", python_bytes(little_endian(tables.range_units)));
   std::string layouts;
   for (const RangeLayout& layout : tables.layouts) layouts += layout_line(layout);
@@ -154,7 +169,7 @@ _layouts = (
 
 
 def _slow(c, s):
-    return c[0] + (((c[1] + ((c[2] * s) >> 16)) * s) >> 8)
+    return c[0] + ((c[1] * s) >> 7)
 
 
 def _node(grid, i):
@@ -177,12 +192,12 @@ def _bearing(du, dv):
     steep = across > along
     if steep:
         along, across = across, along
-    cell = 0
-    count = len(_tangents) // 2
+@normal@    cell = 0
+    count = @tangents_count@
     while count:
         half = count >> 1
-        at = 2 * (cell + half)
-        if (along * (_tangents[at] | _tangents[at + 1] << 8)) >> 16 < across:
+        at = cell + half
+        if @product@ < across:
             cell += half + 1
             count -= half + 1
         else:
@@ -211,18 +226,18 @@ def encode(object, u_sub, v_sub):
         lower = upper + 2 * columns
         du += _moved(grid, upper, lower, fu, fv, log2)
         dv += _moved(grid, upper + 1, lower + 1, fu, fv, log2)
-    square = du * du + dv * dv
+    steps = (du * du >> shift) + (dv * dv >> shift)
+    bend = 0
     if kind == 'harmonic' or kind == 'sectors':
-        s = min(square >> @slow_shift@, @slow_most@)
+        s = min(steps >> (@slow_shift@ - shift), @slow_most@)
         if kind == 'harmonic':
-            bend = (_slow(harmonic[0], s) * du + _slow(harmonic[1], s) * dv) >> 8
-            square = max(0, square + bend)
-        du += _slow(harmonic[2], s) >> 8
-        dv += _slow(harmonic[3], s) >> 8
+            bend = (_slow(harmonic[0], s) * ((du + @near_half@) >> @near_shift@) +
+                    _slow(harmonic[1], s) * ((dv + @near_half@) >> @near_shift@))
+            bend = bend >> (shift - @near_shift@) if shift >= @near_shift@ else bend << (@near_shift@ - shift)
+        du += _slow(harmonic[2], s)
+        dv += _slow(harmonic[3], s)
     bearing = _bearing(du, dv)
-    q = square >> shift
-    if width == 2:
-        q = min(q, 65535)
+    q = max(0, steps + bend)
     first = 0
     if kind == 'sectors':
         first = ((bearing * ((sectors << 16) // @bearings@)) >> 16) * @range_codes@
