@@ -171,20 +171,6 @@ Ellipse ellipse_of(ImagePoint centre, const RimEllipse& axes) {
   return ellipse;
 }
 
-std::optional<Ellipse> circle_through(ImagePoint a, ImagePoint b, ImagePoint c) {
-  const double bu = b.u_px - a.u_px;
-  const double bv = b.v_px - a.v_px;
-  const double cu = c.u_px - a.u_px;
-  const double cv = c.v_px - a.v_px;
-  const double cross = 2.0 * (bu * cv - bv * cu);
-  const double bb = bu * bu + bv * bv;
-  const double cc = cu * cu + cv * cv;
-  if (std::abs(cross) < 1e-9 * (bb + cc)) return std::nullopt;
-  const double u = (cv * bb - bv * cc) / cross;
-  const double v = (bu * cc - cu * bb) / cross;
-  return circle({a.u_px + u, a.v_px + v}, std::hypot(u, v));
-}
-
 std::optional<EllipseFit> fit_ellipse(std::span<const ImagePoint> points,
                                       const Ellipse& start,
                                       RoundnessPrior prior,

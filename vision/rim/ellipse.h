@@ -30,9 +30,6 @@ struct Ellipse {
 [[nodiscard]] Ellipse circle(ImagePoint centre, double radius_px);
 [[nodiscard]] Ellipse ellipse_of(ImagePoint centre, const RimEllipse& axes);
 
-/// The circle through three points; none when they lie on a line.
-[[nodiscard]] std::optional<Ellipse> circle_through(ImagePoint a, ImagePoint b, ImagePoint c);
-
 /// What is known of the shape before any point is seen: half the difference of shape uu and vv, and
 /// shape uv, are normal about 0 with this deviation relative to the radius. 0: nothing is known.
 struct RoundnessPrior {

@@ -6,7 +6,6 @@
 #include <cmath>
 #include <numbers>
 #include <opencv2/imgproc.hpp>
-#include <random>
 
 #include "vision/rim/ellipse.h"
 #include "vision/rim/radial_edges.h"
@@ -21,20 +20,16 @@ struct Support {
   double share = 0.0;     ///< of the rays inside the image, those with an edge on the circle
   double falling = 0.0;   ///< of those, the ones that get darker outwards
   double in_image = 0.0;  ///< share of the circumference inside the image
+  [[nodiscard]] double of_all() const { return share * in_image; }
 };
 
-/// Calls `visit(ray, nearest edge or null)` for every `every`th ray, where it meets the circle
-/// inside the image.
+/// Calls `visit(ray, nearest edge or null)` for each ray that meets the circle inside the image.
 template <class Visit>
-void walk(const RadialEdges& edges,
-          const Ellipse& circle,
-          double within_px,
-          std::size_t every,
-          Visit visit) {
+void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Visit visit) {
   const double du = circle.p[0] - edges.from.u_px;
   const double dv = circle.p[1] - edges.from.v_px;
   const double squared = circle.p[2] * circle.p[2];
-  for (std::size_t ray = 0; ray < edges.rays.size(); ray += every) {
+  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
     const double along = du * edges.cos_azimuth[ray] + dv * edges.sin_azimuth[ray];
     const double across = dv * edges.cos_azimuth[ray] - du * edges.sin_azimuth[ray];
     const double r = along + std::sqrt(std::max(0.0, squared - across * across));
@@ -57,21 +52,18 @@ void walk(const RadialEdges& edges,
   }
 }
 
-Support support_of(const RadialEdges& edges,
-                   const Ellipse& circle,
-                   double within_px,
-                   std::size_t every = 1) {
+Support support_of(const RadialEdges& edges, const Ellipse& circle, double within_px) {
   int met = 0;
   int hit = 0;
   int falling = 0;
-  walk(edges, circle, within_px, every, [&](std::size_t, const RadialEdge* edge) {
+  walk(edges, circle, within_px, [&](std::size_t, const RadialEdge* edge) {
     ++met;
     if (edge == nullptr) return;
     ++hit;
     if (edge->step < 0.0) ++falling;
   });
   Support support;
-  support.in_image = met * static_cast<double>(every) / static_cast<double>(edges.rays.size());
+  support.in_image = met / static_cast<double>(edges.rays.size());
   support.share = met > 0 ? hit / static_cast<double>(met) : 0.0;
   support.falling = hit > 0 ? falling / static_cast<double>(hit) : 0.0;
   return support;
@@ -85,7 +77,7 @@ bool holds(const Ellipse& circle, ImagePoint at) {
 std::optional<Ellipse> refitted(const RadialEdges& edges, const Ellipse& circle, double within_px) {
   Eigen::Matrix3d normal = Eigen::Matrix3d::Zero();
   Eigen::Vector3d right = Eigen::Vector3d::Zero();
-  walk(edges, circle, within_px, 1, [&](std::size_t ray, const RadialEdge* edge) {
+  walk(edges, circle, within_px, [&](std::size_t ray, const RadialEdge* edge) {
     if (edge == nullptr) return;
     const double u = edge->radius_px * edges.cos_azimuth[ray];
     const double v = edge->radius_px * edges.sin_azimuth[ray];
@@ -111,80 +103,135 @@ struct RadiusRange {
   double high_px = 0.0;
 };
 
-/// Distinct circles that the edges draw, best supported first (Fischler and Bolles, 1981).
-std::vector<Candidate> circles_in(const RadialEdges& edges,
+/// An edge in the image.
+struct EdgeAt {
+  double u_px = 0.0;
+  double v_px = 0.0;
+};
+
+std::vector<EdgeAt> places_of(const RadialEdges& edges) {
+  std::vector<EdgeAt> places;
+  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
+    for (const RadialEdge& e : edges.rays[ray]) {
+      places.push_back({edges.from.u_px + e.radius_px * edges.cos_azimuth[ray],
+                        edges.from.v_px + e.radius_px * edges.sin_azimuth[ray]});
+    }
+  }
+  return places;
+}
+
+/// Where to start looking: for centres on a grid the radii at which most edges lie, over how many
+/// could be seen there (Hough, 1962). Complete: no circle is missed for want of luck.
+std::vector<Ellipse> voted_circles(const RadialEdges& edges,
+                                   cv::Size size,
+                                   RadiusRange radius,
+                                   double centre_reach_px,
+                                   double grid_px) {
+  constexpr std::size_t kDirections = 72;
+  constexpr std::size_t kKept = 200;
+  const std::vector<EdgeAt> places = places_of(edges);
+  const auto bins = static_cast<std::size_t>(radius.high_px / grid_px) + 2;
+  std::vector<double> votes(bins);
+  std::vector<double> seen(bins);
+  struct Vote {
+    double share;
+    Ellipse circle;
+  };
+  std::vector<Vote> found;
+  const int n = static_cast<int>(centre_reach_px / grid_px);
+  for (int a = -n; a <= n; ++a) {
+    for (int b = -n; b <= n; ++b) {
+      if (std::hypot(a, b) > n) continue;
+      const ImagePoint centre{edges.from.u_px + a * grid_px, edges.from.v_px + b * grid_px};
+      std::fill(votes.begin(), votes.end(), 0.0);
+      std::fill(seen.begin(), seen.end(), 0.0);
+      for (const EdgeAt& at : places) {
+        const double r = std::hypot(at.u_px - centre.u_px, at.v_px - centre.v_px) / grid_px;
+        const auto bin = static_cast<std::size_t>(r);
+        if (bin + 1 >= bins) continue;
+        const double part = r - static_cast<double>(bin);
+        votes[bin] += 1.0 - part;
+        votes[bin + 1] += part;
+      }
+      for (std::size_t k = 0; k < kDirections; ++k) {
+        const double t = kTwoPi * static_cast<double>(k) / kDirections;
+        const double cu = std::cos(t);
+        const double cv = std::sin(t);
+        const double way_u = cu > 0 ? (size.width - 2 - centre.u_px) / std::max(cu, 1e-9)
+                                    : (1 - centre.u_px) / std::min(cu, -1e-9);
+        const double way_v = cv > 0 ? (size.height - 2 - centre.v_px) / std::max(cv, 1e-9)
+                                    : (1 - centre.v_px) / std::min(cv, -1e-9);
+        const double way = std::clamp(std::min(way_u, way_v) / grid_px, 0.0, double(bins - 1));
+        seen[static_cast<std::size_t>(way)] += 1.0 / kDirections;
+      }
+      for (std::size_t bin = bins - 1; bin-- > 0;) seen[bin] += seen[bin + 1];
+      for (std::size_t bin = 1; bin + 1 < bins; ++bin) {
+        const double r = static_cast<double>(bin) * grid_px;
+        if (r < radius.low_px || r > radius.high_px || seen[bin] < 0.5) continue;
+        const double sum = votes[bin - 1] + votes[bin] + votes[bin + 1];
+        if (votes[bin] < votes[bin - 1] || votes[bin] < votes[bin + 1]) continue;
+        const double share = sum / (seen[bin] * static_cast<double>(edges.rays.size()));
+        if (share > 0.35) found.push_back({share, circle(centre, r)});
+      }
+    }
+  }
+  std::stable_sort(
+      found.begin(), found.end(), [](const Vote& x, const Vote& y) { return x.share > y.share; });
+  std::vector<Ellipse> starts;
+  for (const Vote& vote : found) {
+    const bool known = std::any_of(starts.begin(), starts.end(), [&](const Ellipse& other) {
+      return (vote.circle.p.head<3>() - other.p.head<3>()).cwiseAbs().maxCoeff() < 2.5 * grid_px;
+    });
+    if (!known) starts.push_back(vote.circle);
+    if (starts.size() == kKept) break;
+  }
+  return starts;
+}
+
+/// The circles that the edges draw, best supported first; an edge belongs to one circle only, so
+/// that no circle lives on pieces of better ones.
+std::vector<Candidate> circles_in(RadialEdges edges,
+                                  cv::Size size,
                                   RadiusRange radius,
+                                  double centre_reach_px,
                                   double within_px,
                                   double least_in_image) {
-  std::vector<std::size_t> rays;
-  for (std::size_t ray = 0; ray < edges.rays.size(); ++ray) {
-    if (!edges.rays[ray].empty()) rays.push_back(ray);
-  }
+  std::vector<Ellipse> starts =
+      voted_circles(edges, size, radius, centre_reach_px, 2.0 * within_px);
   std::vector<Candidate> found;
-  if (rays.size() < 12) return found;
-  std::minstd_rand random(20011);
-  const auto pick = [&](std::size_t count) { return static_cast<std::size_t>(random()) % count; };
-  const auto point = [&](std::size_t ray) {
-    const auto& candidates = edges.rays[ray];
-    const double r = candidates[pick(candidates.size())].radius_px;
-    return ImagePoint{edges.from.u_px + r * edges.cos_azimuth[ray],
-                      edges.from.v_px + r * edges.sin_azimuth[ray]};
-  };
-  const std::size_t apart = edges.rays.size() / 8;
-  const auto far = [&](std::size_t a, std::size_t b) {
-    const std::size_t d = a > b ? a - b : b - a;
-    return std::min(d, edges.rays.size() - d) >= apart;
-  };
-  constexpr int kDraws = 12000;
-  constexpr std::size_t kKept = 60;
-  for (int draw = 0; draw < kDraws; ++draw) {
-    const std::size_t a = rays[pick(rays.size())];
-    const std::size_t b = rays[pick(rays.size())];
-    const std::size_t c = rays[pick(rays.size())];
-    if (!far(a, b) || !far(b, c) || !far(a, c)) continue;
-    const auto circle = circle_through(point(a), point(b), point(c));
-    if (!circle || circle->p[2] < radius.low_px || circle->p[2] > radius.high_px ||
-        !holds(*circle, edges.from)) {
-      continue;
-    }
-    // A quarter of the rays tells most draws from a circle.
-    if (support_of(edges, *circle, within_px, 4).share < 0.25) continue;
-    const Support support = support_of(edges, *circle, within_px);
-    if (support.in_image < least_in_image || support.share < 0.3) continue;
-    found.push_back({*circle, support});
-    if (found.size() >= 4 * kKept) {
-      std::nth_element(
-          found.begin(),
-          found.begin() + kKept,
-          found.end(),
-          [](const Candidate& x, const Candidate& y) { return x.support.share > y.support.share; });
-      found.resize(kKept);
-    }
-  }
-  for (Candidate& candidate : found) {
-    for (const double slack : {1.5, 1.0}) {
-      const auto better = refitted(edges, candidate.circle, slack * within_px);
-      if (!better || !holds(*better, edges.from) || better->p[2] < radius.low_px ||
-          better->p[2] > radius.high_px) {
-        break;
+  constexpr double kLeastShare = 0.3;
+  constexpr std::size_t kMostCircles = 8;
+  while (found.size() < kMostCircles && !starts.empty()) {
+    Candidate best;
+    for (Ellipse& start : starts) {
+      Ellipse now = start;
+      for (const double slack : {3.0, 2.0, 1.5, 1.0}) {
+        const auto better = refitted(edges, now, slack * within_px);
+        if (!better || !holds(*better, edges.from) || better->p[2] < radius.low_px ||
+            better->p[2] > radius.high_px) {
+          break;
+        }
+        now = *better;
       }
-      const Support support = support_of(edges, *better, within_px);
-      if (support.share < candidate.support.share || support.in_image < least_in_image) break;
-      candidate = {*better, support};
+      if (std::hypot(now.p[0] - edges.from.u_px, now.p[1] - edges.from.v_px) > centre_reach_px) {
+        continue;
+      }
+      const Support support = support_of(edges, now, within_px);
+      if (support.in_image < least_in_image || support.share <= best.support.share) continue;
+      best = {now, support};
     }
-  }
-  std::stable_sort(found.begin(), found.end(), [](const Candidate& x, const Candidate& y) {
-    return x.support.share > y.support.share;
-  });
-  std::vector<Candidate> distinct;
-  for (const Candidate& candidate : found) {
-    const bool known = std::any_of(distinct.begin(), distinct.end(), [&](const Candidate& other) {
-      return (candidate.circle.p.head<3>() - other.circle.p.head<3>()).cwiseAbs().sum() <
-             3.0 * within_px;
+    if (best.support.share < kLeastShare) break;
+    found.push_back(best);
+    walk(edges, best.circle, 1.5 * within_px, [&](std::size_t ray, const RadialEdge* edge) {
+      if (edge == nullptr) return;
+      const double r = edge->radius_px;
+      std::erase_if(edges.rays[ray], [&](const RadialEdge& e) { return e.radius_px == r; });
     });
-    if (!known) distinct.push_back(candidate);
+    std::erase_if(starts, [&](const Ellipse& start) {
+      return support_of(edges, start, 2.0 * within_px).share < kLeastShare;
+    });
   }
-  return distinct;
+  return found;
 }
 
 double median(std::vector<double> values) {
@@ -213,14 +260,15 @@ std::optional<double> level_between(const cv::Mat& grey,
   return median(std::move(levels));
 }
 
-/// The mirror's edge among the circles: the largest with at least three quarters of the best
-/// support. Where that is the outer edge of a dark ring around the mirror, the ring's inner edge.
+/// The mirror's edge among the circles: the largest that is drawn well enough. Where that is the
+/// outer edge of a dark ring around the mirror, the ring's inner edge.
 const Candidate* mirror_edge(const cv::Mat& grey, const std::vector<Candidate>& circles) {
   if (circles.empty()) return nullptr;
-  const double enough = std::max(0.45, 0.75 * circles.front().support.share);
+  constexpr double kEnough =
+      0.42;  // 40 % of the edge may be hidden, and not all of the rest is seen
   const Candidate* outer = nullptr;
   for (const Candidate& c : circles) {
-    if (c.support.share >= enough && (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
+    if (c.support.of_all() >= kEnough && (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
       outer = &c;
     }
   }
@@ -232,7 +280,7 @@ const Candidate* mirror_edge(const cv::Mat& grey, const std::vector<Candidate>& 
     const double off =
         std::hypot(c.circle.p[0] - outer->circle.p[0], c.circle.p[1] - outer->circle.p[1]);
     if (r2 > 0.985 * r1 || r2 < 0.7 * r1 || off > 0.06 * r1 || c.support.falling < 0.6 ||
-        c.support.share < 0.8 * enough) {
+        c.support.of_all() < 0.8 * kEnough) {
       continue;
     }
     const double margin = std::min(2.0, 0.25 * (r1 - r2));
@@ -366,7 +414,7 @@ void find_reflection(const cv::Mat& grey, Rim& rim) {
   const RadialEdges edges = radial_edges(grey, rim.centre.at, 120, 6, 1.0);
   const double within = std::max(0.8, 0.006 * r);
   std::vector<Candidate> circles =
-      circles_in(edges, {std::max(3.0, 0.03 * r), 0.3 * r}, within, 1.0);
+      circles_in(edges, grey.size(), {std::max(3.0, 0.03 * r), 0.3 * r}, 0.1 * r, within, 1.0);
   const Candidate* best = nullptr;
   for (const Candidate& c : circles) {
     const double off =
@@ -409,14 +457,17 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
   // Twice: faint arcs come out best when the rays start from their own centre.
   std::optional<Ellipse> edge;
   double noise = 0.0;
+  double reach = 0.2 * shorter;
   for (ImagePoint from = middle; const double spread_rays : {1.5, 3.0}) {
     const RadialEdges edges = radial_edges(small, from, 240, 10, spread_rays);
-    const std::vector<Candidate> circles = circles_in(edges, radius, kWithinPx, 0.5);
+    const std::vector<Candidate> circles =
+        circles_in(edges, small.size(), radius, reach, kWithinPx, 0.5);
     const Candidate* found = mirror_edge(small, circles);
     if (found == nullptr) break;
     edge = found->circle;
     noise = edges.noise;
     from = edge->centre();
+    reach = 8.0;
   }
   if (!edge) return std::nullopt;
 

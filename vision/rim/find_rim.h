@@ -32,7 +32,6 @@ struct Rim {
 ///   bgr      CV_8UC3 or CV_8UC1, at least 64 x 64
 ///   none     when no circle has enough edge
 ///   errors   on rendered frames the centre is within 0.2 px in the median (tests/bench/rim_bench)
-/// The same frame gives the same answer: the search draws from a fixed sequence.
 [[nodiscard]] std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search = {});
 
 }  // namespace rondel::vision
