@@ -83,8 +83,8 @@ YamlMap::YamlMap(std::string_view text, std::string file, std::vector<Problem>& 
   check_keys_once();
 }
 
-YamlMap::YamlMap(const YamlMap& parent, YAML::Node node, std::string path)
-    : node_(std::move(node)),
+YamlMap::YamlMap(const YamlMap& parent, const YAML::Node& node, std::string path)
+    : node_(node),
       path_(std::move(path)),
       file_(parent.file_),
       problems_(parent.problems_) {

@@ -74,7 +74,7 @@ class YamlMap {
   [[nodiscard]] std::string path_of(std::string_view key) const;
 
  private:
-  YamlMap(const YamlMap& parent, YAML::Node node, std::string path);
+  YamlMap(const YamlMap& parent, const YAML::Node& node, std::string path);
   [[nodiscard]] YAML::Node at(std::string_view key) const;
   /// The line of the key that `value` belongs to; a missing value has no line of its own.
   [[nodiscard]] int line_of_key(const YAML::Node& value) const;
