@@ -114,7 +114,7 @@ RangeLayout get_layout(Reader& in, int range_codes) {
   in.need(kind <= static_cast<std::uint8_t>(Straightening::grid), "unknown layout");
   layout.kind = static_cast<Straightening>(kind);
   for (auto& polynomial : layout.harmonic) {
-    for (std::int8_t& c : polynomial) c = in.get<std::int8_t>();
+    polynomial = {in.get<std::int8_t>(), in.get<std::int8_t>()};
   }
   layout.sectors = in.whole(1, 64, "sectors");
   in.need(std::has_single_bit(static_cast<unsigned>(layout.sectors)), "sectors");
