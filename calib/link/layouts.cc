@@ -24,8 +24,8 @@ bool to_board(const std::array<double, 2>& c,
   if (!(std::abs(first) < 126.0 && std::abs(slope) < 127.0 && std::abs(first + change) < 126.0)) {
     return false;
   }
-  // What changes by less than an eighth of a pixel from its middle is not worth a product.
-  if (std::abs(change) < 2.0) {
+  // What changes by less than a fifth of a pixel from its middle is not worth a product.
+  if (std::abs(change) < 3.0) {
     first += 0.5 * change;
     slope = 0.0;
   }

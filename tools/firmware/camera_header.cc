@@ -171,19 +171,6 @@ std::string square_code(const link::BoardTables& tables, int shift, bool wide) {
   Values values = common_values(tables);
   values.emplace_back("shift", std::to_string(shift));
   values.emplace_back("bits", wide ? "32" : "16");
-  if (shift == 8 && !wide) {
-    return fill(R"(
-/* d^2 >> 8, from products of bytes. */
-static inline uint16_t @p@_square8(int16_t d) {
-  const uint16_t size = (uint16_t)(d < 0 ? -d : d);
-  const uint8_t high = (uint8_t)(size >> 8);
-  const uint8_t low = (uint8_t)size;
-  return (uint16_t)(((uint16_t)(high * high) << 8) + 2u * (uint16_t)(high * low) +
-                    ((uint16_t)(low * low) >> 8));
-}
-)",
-                values);
-  }
   return fill(R"(
 static inline uint@bits@_t @p@_square@shift@(int16_t d) {
   return (uint@bits@_t)((uint32_t)((int32_t)d * d) >> @shift@);
@@ -233,10 +220,7 @@ std::string bearing_code(const link::BoardTables& tables) {
   values.emplace_back("bits", std::to_string(tables.tangent_bits));
   values.emplace_back("count", std::to_string(count));
   values.emplace_back("tangents", number_lines(tables.tangents));
-  values.emplace_back("last", std::to_string(power - 1));
-  values.emplace_back("rest", std::to_string(count - power + 1));
-  values.emplace_back("first_half", std::to_string(power / 2));
-  values.emplace_back("step", power <= 256 ? "uint8_t" : "uint16_t");
+  values.emplace_back("power", std::to_string(power));
   values.emplace_back("cell", 2 * half <= 255 ? "uint8_t" : "uint16_t");
   values.emplace_back("quarter", std::to_string(half / 2 - offset));
   values.emplace_back("half", std::to_string(half - offset));
@@ -284,14 +268,15 @@ static inline @p@_code @p@_bearing(int16_t x, int16_t y) {
     }
     code += "  {\n";
     if (eight) code += "    const uint8_t slope = (uint8_t)(along >> 8);\n";
-    code += fill(R"(    const uint@bits@_t *at = @p@_tangents;
-    @step@ step;
-    if (@product@at + @last@@close@ < across) at += @rest@;
-    for (step = @first_half@; step != 0u; step = (@step@)(step >> 1)) {
-      const uint@bits@_t *next = at + step;
-      if (@product@next - 1@close@ < across) at = next;
-    }
-    cell = (@cell@)(at - @p@_tangents);
+    // A table of 2^n - 1 tangents needs no test of the index.
+    values.emplace_back("inside",
+                        2 * power == count + 1 ? "" : fmt::format("next <= {}u && ", count));
+    code += fill(R"(    @cell@ step = @power@;
+    do {
+      const @cell@ next = (@cell@)(cell + step);
+      if (@inside@@product@@p@_tangents + (@cell@)(next - 1u)@close@ < across) cell = next;
+      step = (@cell@)(step >> 1);
+    } while (step != 0u);
   }
 )",
                  values);
