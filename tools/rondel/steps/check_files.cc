@@ -16,6 +16,11 @@ namespace {
 using nlohmann::ordered_json;
 using verdict::RowState;
 
+/// Names of files and lights may be any bytes; what is no UTF-8 is replaced.
+std::string json_text(const ordered_json& json, int indent = -1) {
+  return json.dump(indent, ' ', false, ordered_json::error_handler_t::replace);
+}
+
 /// Rounded so that files show no more than is known; the same double gives the same text.
 double rounded(double value, double step) {
   const double r = std::round(value / step) * step;
@@ -104,6 +109,15 @@ ordered_json row_json(const CheckReport& report, std::size_t i) {
   if (!entry.absent) {
     json["tape_range_m"] = rounded(entry.range_m, kLengthStep);
     json["tape_bearing_deg"] = maybe(entry.bearing_rad, kDegPerRad, kDegreeStep);
+    if (report.curve != nullptr && entry.bearing_rad) {
+      const auto at = report.curve->pixel_of(
+          {entry.range_m, *entry.bearing_rad},
+          report.venue->objects[static_cast<std::size_t>(entry.object)].seen_height_m());
+      if (at) {
+        json["tape_u_px"] = rounded(at->u_px, 1e-3);
+        json["tape_v_px"] = rounded(at->v_px, 1e-3);
+      }
+    }
   }
   const verdict::Find* find = find_of(report, i);
   if (find == nullptr) return json;
@@ -296,12 +310,12 @@ nlohmann::ordered_json check_document(const CheckReport& report) {
 
 std::string check_json(const CheckReport& report, const MadeFrom& made_from) {
   // Measurements are written one by one: an archive's rows need not stand in memory twice.
-  std::string out = check_document(report).dump(2);
+  std::string out = json_text(check_document(report), 2);
   out.erase(out.rfind("\n}"));
   out += ",\n  \"measurements\": [";
   for (std::size_t i = 0; i < report.verdict.rows.size(); ++i) {
     out += i == 0 ? "\n    " : ",\n    ";
-    out += row_json(report, i).dump();
+    out += json_text(row_json(report, i));
   }
   ordered_json record = ordered_json::object();
   for (const auto& [name, hash] : made_from) record[name] = hash;
@@ -316,6 +330,8 @@ std::string check_csv(const CheckReport& report) {
                                           "state",
                                           "tape_range_m",
                                           "tape_bearing_deg",
+                                          "tape_u_px",
+                                          "tape_v_px",
                                           "u_px",
                                           "v_px",
                                           "area_px",
@@ -341,7 +357,7 @@ std::string check_csv(const CheckReport& report) {
     for (std::size_t c = 0; c < kColumns.size(); ++c) {
       const auto value = row.find(kColumns[c]);
       if (value != row.end() && !value->is_null()) {
-        out += value->is_string() ? csv_cell(value->get<std::string>()) : value->dump();
+        out += value->is_string() ? csv_cell(value->get<std::string>()) : json_text(*value);
       }
       out += c + 1 < kColumns.size() ? "," : "\n";
     }
@@ -431,7 +447,7 @@ std::string shard_text(const ShardFile& file) {
     }
     json["images"][image] = std::move(list);
   }
-  return json.dump() + "\n";
+  return json_text(json) + "\n";
 }
 
 ShardFile parse_shard(const std::string& text, const std::string& name) {

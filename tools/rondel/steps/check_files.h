@@ -14,6 +14,7 @@ namespace rondel::app {
 struct CheckReport {
   const VenueSpec* venue = nullptr;
   const TapeBatch* batch = nullptr;  ///< only images that were looked at, with their rows
+  const FloorMap* curve = nullptr;  ///< tells where the tape's places should appear; none: not told
   std::vector<std::vector<verdict::Find>> finds;
   verdict::Verdict verdict;
   nlohmann::ordered_json causes = nlohmann::ordered_json::array();

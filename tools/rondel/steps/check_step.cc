@@ -231,6 +231,7 @@ Outcome run_check(const Workspace& workspace, const CheckOptions& options, Progr
   CheckReport report;
   report.venue = &workspace.venue;
   report.batch = &batch;
+  report.curve = board.curve.get();
   report.finds = std::move(examined.finds);
   report.partial = examined.stopped;
   report.images_in_sheet = images_in_sheet;
