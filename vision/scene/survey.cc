@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <cassert>
 #include <cmath>
+#include <map>
 #include <opencv2/imgproc.hpp>
 #include <set>
 
@@ -36,10 +37,11 @@ class Hand {
   std::uint64_t next_ = 0;
 };
 
-/// Stands free: worth a row on a tape sheet.
+/// Stands free: worth a row on a tape sheet. A box is measured at its foot, which must be in sight.
 bool stands_free(const ObjectTruth& seen, const Survey& plan) {
-  return seen.area_px >= 8.0 && seen.hidden_fraction < 0.2 && seen.spot.range_m < plan.farthest_m &&
-         seen.at.has_value();
+  const double most_hidden = seen.height_m > 0.0 ? 0.2 : 0.02;
+  return seen.area_px >= 8.0 && seen.hidden_fraction < most_hidden &&
+         seen.spot.range_m < plan.farthest_m && seen.at.has_value();
 }
 
 std::string mark_row(const std::string& image,
@@ -128,70 +130,70 @@ std::string box_row(const std::string& image,
                      deep.at.y + half);
 }
 
-std::string swatches_of_objects(const Scene& scene,
-                                const std::vector<FrameTruth>& truths,
-                                std::size_t light) {
-  std::set<std::string> names;
-  for (const SceneObject& object : scene.objects) {
-    if (!object.name.empty()) names.insert(object.name);
-  }
-  struct Sighting {
-    double area = 0.0;
-    std::size_t frame = 0;
-    std::size_t object = 0;
-  };
-  std::string rows;
-  for (const std::string& name : names) {
-    std::vector<Sighting> sightings;
-    for (std::size_t f = 0; f < truths.size(); ++f) {
-      if (scene.frames[f].light != light) continue;
-      for (const ObjectTruth& seen : truths[f].seen) {
-        if (seen.name != name || !stands_free(seen, *scene.survey) || seen.area_px < 25.0) continue;
-        sightings.push_back({seen.area_px, f, seen.object});
-      }
+/// Frames of a light that between them show every kind of object near and at a middling distance.
+std::set<std::size_t> frames_to_label(const Scene& scene,
+                                      const std::vector<FrameTruth>& truths,
+                                      std::size_t light) {
+  std::map<std::string, std::vector<std::pair<double, std::size_t>>> sights;
+  for (std::size_t f = 0; f < truths.size(); ++f) {
+    if (scene.frames[f].light != light) continue;
+    for (const ObjectTruth& seen : truths[f].seen) {
+      if (stands_free(seen, *scene.survey)) sights[seen.name].emplace_back(seen.area_px, f);
     }
-    std::sort(sightings.begin(), sightings.end(), [](const Sighting& a, const Sighting& b) {
-      return a.area != b.area ? a.area > b.area : a.frame < b.frame;
-    });
-    // Near, middling and far.
-    const std::size_t count = std::min<std::size_t>(4, sightings.size());
-    for (std::size_t k = 0; k < count; ++k) {
-      const Sighting& pick =
-          sightings[k * (sightings.size() - 1) / std::max<std::size_t>(1, count - 1)];
-      const FrameTruth& truth = truths[pick.frame];
-      const Deep deep = deepest(truth.objects == static_cast<double>(pick.object + 1));
-      const bool round = scene.objects[pick.object].solid == Solid::ball;
-      rows +=
-          round ? disc_row(truth.image, name, deep, 0.85) : box_row(truth.image, name, deep, 0.9);
+  }
+  std::set<std::size_t> chosen;
+  for (auto& [name, of_name] : sights) {
+    std::sort(of_name.rbegin(), of_name.rend());
+    chosen.insert(of_name.front().second);
+    chosen.insert(of_name[of_name.size() / 2].second);
+  }
+  return chosen;
+}
+
+/// Around every piece of an object that can be made out: a disc for a ball in full sight, else the
+/// piece's outline.
+std::string swatches_of_objects(const Scene& scene, const FrameTruth& truth) {
+  constexpr int kLeastPx = 12;
+  std::string rows;
+  for (const ObjectTruth& seen : truth.seen) {
+    const cv::Mat whole = truth.objects == static_cast<double>(seen.object + 1);
+    if (scene.objects[seen.object].solid == Solid::ball && seen.hidden_fraction < 0.02) {
+      if (cv::countNonZero(whole) >= kLeastPx) {
+        rows += disc_row(truth.image, seen.name, deepest(whole), 1.0);
+      }
+      continue;
+    }
+    std::vector<std::vector<cv::Point>> outlines;
+    cv::findContours(whole, outlines, cv::RETR_EXTERNAL, cv::CHAIN_APPROX_SIMPLE);
+    for (const std::vector<cv::Point>& outline : outlines) {
+      if (cv::contourArea(outline) < kLeastPx) continue;
+      std::vector<cv::Point> corners;
+      cv::approxPolyDP(outline, corners, 0.8, true);
+      if (corners.size() < 3) continue;
+      std::string points;
+      for (const cv::Point& p : corners) points += fmt::format(" {} {}", p.x, p.y);
+      rows += fmt::format("{},{},polygon,{}\n", truth.image, seen.name, points.substr(1));
     }
   }
   return rows;
 }
 
-std::string swatches_of_surroundings(const Scene& scene,
-                                     const std::vector<FrameTruth>& truths,
-                                     std::size_t light) {
+std::string swatches_of_surroundings(const FrameTruth& truth) {
   std::string rows;
-  int frames = 0;
-  for (std::size_t f = 0; f < truths.size() && frames < 4; ++f) {
-    if (scene.frames[f].light != light) continue;
-    ++frames;
-    const FrameTruth& truth = truths[f];
-    // Clear of every object by some pixels: what a person would draw around.
-    cv::Mat objects;
-    cv::dilate(truth.objects, objects, cv::getStructuringElement(cv::MORPH_ELLIPSE, {9, 9}));
-    const cv::Mat clear = truth.mask & (objects == 0);
-    cv::Mat left = clear.clone();
-    for (int k = 0; k < 5; ++k) {
-      const Deep deep = deepest(left);
-      if (deep.radius < 4.0) break;
-      rows += box_row(truth.image, "surroundings", deep, 1.0);
-      cv::circle(left, deep.at, static_cast<int>(deep.radius), 0, cv::FILLED);
-    }
-    for (const PixelClass other : {PixelClass::scenery, PixelClass::wall}) {
-      const Deep deep = deepest(clear & (truth.classes == static_cast<double>(other)));
-      if (deep.radius >= 2.0) rows += disc_row(truth.image, "surroundings", deep, 0.9);
-    }
+  // Clear of every object by some pixels: what a person would draw around.
+  cv::Mat objects;
+  cv::dilate(truth.objects, objects, cv::getStructuringElement(cv::MORPH_ELLIPSE, {9, 9}));
+  const cv::Mat clear = truth.mask & (objects == 0);
+  cv::Mat left = clear.clone();
+  for (int k = 0; k < 5; ++k) {
+    const Deep deep = deepest(left);
+    if (deep.radius < 4.0) break;
+    rows += box_row(truth.image, "surroundings", deep, 1.0);
+    cv::circle(left, deep.at, static_cast<int>(deep.radius), 0, cv::FILLED);
+  }
+  for (const PixelClass other : {PixelClass::scenery, PixelClass::wall}) {
+    const Deep deep = deepest(clear & (truth.classes == static_cast<double>(other)));
+    if (deep.radius >= 2.0) rows += disc_row(truth.image, "surroundings", deep, 0.9);
   }
   return rows;
 }
@@ -235,8 +237,10 @@ Sheets survey(const Scene& scene, const std::vector<FrameTruth>& truths) {
 
   sheets.swatches_csv = "image,label,shape,points\n";
   for (std::size_t light = 0; light < scene.lights.size(); ++light) {
-    sheets.swatches_csv += swatches_of_objects(scene, truths, light);
-    sheets.swatches_csv += swatches_of_surroundings(scene, truths, light);
+    for (const std::size_t f : frames_to_label(scene, truths, light)) {
+      sheets.swatches_csv += swatches_of_objects(scene, truths[f]);
+      sheets.swatches_csv += swatches_of_surroundings(truths[f]);
+    }
   }
 
   sheets.tape_csv = "image,object,range_m,bearing_deg\n";

@@ -17,7 +17,8 @@ struct Sheets {
 
 /// `scene.survey` must be there; `truths` are those of scene.frames, in order.
 ///   marks     spots on the bare floor, and balls at their centre, spread over range and bearing
-///   swatches  for every light, each object near, middling and far; floor, walls, scenery
+///   swatches  in frames of every light that show each kind of object near and middling far: all of
+///             the objects, floor, walls, scenery
 ///   tape      every named object that stands free in a frame; some that are not in the image
 [[nodiscard]] Sheets survey(const Scene& scene, const std::vector<FrameTruth>& truths);
 
