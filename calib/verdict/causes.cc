@@ -21,11 +21,14 @@ constexpr double kSignificance = 0.02;
 constexpr double kApart = 3.5;
 /// A knock that moves places by less than this (RMS) is not worth naming.
 constexpr double kLeastShiftPx = 0.12;
-/// An odd row beside the cause itself: chance of it among rows that are right.
-constexpr double kOddRow = 1e-3;
+/// More odd rows than this are no slips of the pen.
+constexpr int kFewRows = 4;
+constexpr std::size_t kMostOddRows = 30;
+/// Another mirror has to be better than a simpler knock by less chance than this.
+constexpr double kMirrorChance = 0.002;
 
 struct Problem {
-  const KnockModel& model;
+  const KnockModel* model = nullptr;
   std::vector<Sighting> rows;
   std::vector<int> first;        ///< of each row, in the residual vector
   std::vector<double> radial_u;  ///< of range-only rows: unit vector along the radius
@@ -34,9 +37,12 @@ struct Problem {
   std::vector<ImagePoint> base;
   Eigen::MatrixXd covariance;
   Eigen::MatrixXd whitener_lower;  ///< Cholesky factor of the covariance
+  Eigen::MatrixXd precision;
 };
 
 constexpr std::array<double, 2> kNoKnock = {0.0, 0.0};
+
+int size_of(const Problem& p, std::size_t row) { return p.rows[row].bearing_known ? 2 : 1; }
 
 /// The row's part of a pixel difference: both coordinates, or along the radius only.
 void put(const Problem& p, std::size_t row, double du, double dv, Eigen::VectorXd& out) {
@@ -53,7 +59,7 @@ void put(const Problem& p, std::size_t row, double du, double dv, Eigen::VectorX
 Problem make_problem(const KnockModel& model,
                      std::span<const Sighting> sightings,
                      const SightingNoise& noise) {
-  Problem p{model, {}, {}, {}, {}, 0, {}, {}, {}};
+  Problem p{&model, {}, {}, {}, {}, 0, {}, {}, {}, {}};
   std::vector<std::size_t> usable;
   std::vector<ImagePoint> at;
   for (std::size_t i = 0; i < sightings.size(); ++i) {
@@ -114,7 +120,9 @@ Problem make_problem(const KnockModel& model,
     }
     p.covariance += column * column.transpose();
   }
-  p.whitener_lower = Eigen::LLT<Eigen::MatrixXd>(p.covariance).matrixL();
+  const Eigen::LLT<Eigen::MatrixXd> factor(p.covariance);
+  p.whitener_lower = factor.matrixL();
+  p.precision = factor.solve(Eigen::MatrixXd::Identity(p.values, p.values));
   return p;
 }
 
@@ -130,7 +138,7 @@ std::optional<Eigen::VectorXd> residuals(const Problem& p,
   Eigen::VectorXd raw(p.values);
   for (std::size_t i = 0; i < p.rows.size(); ++i) {
     const Sighting& s = p.rows[i];
-    const auto at = p.model.pixel_of(s.tape, s.height_m, kind, amounts);
+    const auto at = p.model->pixel_of(s.tape, s.height_m, kind, amounts);
     if (!at) return std::nullopt;
     put(p, i, s.seen.u_px - at->u_px, s.seen.v_px - at->v_px, raw);
   }
@@ -297,6 +305,46 @@ double fall_without(const Eigen::MatrixXd& precision,
   return part.dot(block.ldlt().solve(part));
 }
 
+/// Residuals from which rows can be taken out, the others staying correlated through the
+/// calibration.
+class Trimmed {
+ public:
+  Trimmed(const Problem& p, const Eigen::VectorXd& raw)
+      : p_(p), precision_(p.precision), r_(raw), out_(p.rows.size(), false) {
+    q_ = r_.dot(precision_ * r_);
+  }
+  [[nodiscard]] double q() const { return q_; }
+  [[nodiscard]] int values_out() const { return values_out_; }
+  [[nodiscard]] bool is_out(std::size_t row) const { return out_[row]; }
+  [[nodiscard]] Eigen::VectorXd weighted() const { return precision_ * r_; }
+  [[nodiscard]] double fall(std::size_t row, const Eigen::VectorXd& weighted) const {
+    return fall_without(precision_, weighted, p_.first[row], size_of(p_, row));
+  }
+  void take_out(std::size_t row) {
+    q_ -= fall(row, weighted());
+    const int size = size_of(p_, row);
+    const int at = p_.first[row];
+    out_[row] = true;
+    values_out_ += size;
+    // Condition on the row's being free: Schur complement in the precision.
+    const Eigen::MatrixXd columns = precision_.middleCols(at, size);
+    const Eigen::MatrixXd block = precision_.block(at, at, size, size);
+    precision_ -= columns * block.ldlt().solve(columns.transpose());
+    // Its own block is now zero but for rounding; keep it from being met again.
+    precision_.middleCols(at, size).setZero();
+    precision_.middleRows(at, size).setZero();
+    r_.segment(at, size).setZero();
+  }
+
+ private:
+  const Problem& p_;
+  Eigen::MatrixXd precision_;
+  Eigen::VectorXd r_;
+  std::vector<bool> out_;
+  double q_ = 0.0;
+  int values_out_ = 0;
+};
+
 struct OddRows {
   std::vector<std::size_t> rows;  ///< in the problem
   std::vector<double> p;
@@ -313,23 +361,18 @@ OddRows find_odd_rows(const Problem& p,
                       double p_most,
                       std::size_t most) {
   OddRows odd;
-  Eigen::MatrixXd precision = Eigen::LLT<Eigen::MatrixXd>(p.covariance)
-                                  .solve(Eigen::MatrixXd::Identity(p.values, p.values));
-  Eigen::VectorXd r = raw;
-  odd.q = r.dot(precision * r);
-  std::vector<bool> out(p.rows.size(), false);
+  Trimmed rest(p, raw);
   while (odd.rows.size() < most) {
-    const Eigen::VectorXd weighted = precision * r;
+    const Eigen::VectorXd weighted = rest.weighted();
     double best_p = 1.0;
-    double best_fall = 0.0;
+    double best_fall = -1.0;
     std::size_t best = 0;
-    const int left_values = p.values - odd.values - parameters;
+    const int left_values = p.values - rest.values_out() - parameters;
     for (std::size_t i = 0; i < p.rows.size(); ++i) {
-      if (out[i]) continue;
-      const int size = p.rows[i].bearing_known ? 2 : 1;
-      const double fall = fall_without(precision, weighted, p.first[i], size);
-      if (left_values - size < 1) continue;
-      const double here = chance(fall, odd.q - fall, size, left_values, noise);
+      const int size = size_of(p, i);
+      if (rest.is_out(i) || left_values - size < 1) continue;
+      const double fall = rest.fall(i, weighted);
+      const double here = chance(fall, rest.q() - fall, size, left_values, noise);
       if (here < best_p || (here == best_p && fall > best_fall)) {
         best_p = here;
         best_fall = fall;
@@ -338,20 +381,12 @@ OddRows find_odd_rows(const Problem& p,
     }
     best_p = std::min(1.0, best_p * static_cast<double>(p.rows.size() - odd.rows.size()));
     if (!(best_p < p_most)) break;
-    out[best] = true;
+    rest.take_out(best);
     odd.rows.push_back(best);
     odd.p.push_back(best_p);
-    odd.q -= best_fall;
-    odd.values += p.rows[best].bearing_known ? 2 : 1;
-    // Condition on the row's being free: Schur complement in the precision.
-    const int size = p.rows[best].bearing_known ? 2 : 1;
-    const int at = p.first[best];
-    const Eigen::MatrixXd columns = precision.middleCols(at, size);
-    const Eigen::MatrixXd block = precision.block(at, at, size, size);
-    precision -= columns * block.ldlt().solve(columns.transpose());
-    // Its own block is now zero but for rounding; keep it from being met again.
-    r.segment(at, size).setZero();
   }
+  odd.q = rest.q();
+  odd.values = rest.values_out();
   return odd;
 }
 
@@ -365,7 +400,7 @@ std::optional<FloorSpot> likely_spot(const Problem& p,
   std::optional<FloorSpot> best;
   double least = std::numeric_limits<double>::infinity();
   const auto off = [&](FloorSpot spot) {
-    const auto at = p.model.pixel_of(spot, s.height_m, kind, amounts);
+    const auto at = p.model->pixel_of(spot, s.height_m, kind, amounts);
     if (!at) return std::numeric_limits<double>::infinity();
     return std::hypot(at->u_px - s.seen.u_px, at->v_px - s.seen.v_px);
   };
@@ -425,14 +460,16 @@ std::string rows_text(const std::vector<WrongRow>& rows) {
     if (!lines.empty()) lines += ", ";
     lines += std::to_string(row.line);
   }
-  return rows.size() == 1 ? "Tape row wrong: line " + lines : "Tape rows wrong: lines " + lines;
+  if (rows.size() == 1) return "Tape row wrong: line " + lines;
+  if (static_cast<int>(rows.size()) <= kFewRows) return "Tape rows wrong: lines " + lines;
+  return fmt::format("{} rows stand out: lines {}", rows.size(), lines);
 }
 
 /// RMS over the rows of how far the knock moves them, px.
 double shift_px(const Problem& p, KnockKind kind, std::span<const double> amounts) {
   double sum = 0.0;
   for (std::size_t i = 0; i < p.rows.size(); ++i) {
-    const auto at = p.model.pixel_of(p.rows[i].tape, p.rows[i].height_m, kind, amounts);
+    const auto at = p.model->pixel_of(p.rows[i].tape, p.rows[i].height_m, kind, amounts);
     if (!at) continue;
     sum += std::pow(at->u_px - p.base[i].u_px, 2) + std::pow(at->v_px - p.base[i].v_px, 2);
   }
@@ -446,8 +483,8 @@ std::optional<TellApart> where_they_differ(const Problem& p,
                                            double far_m,
                                            const std::function<bool(FloorSpot)>& visible) {
   const auto seen = [&](const Hypothesis& h, FloorSpot spot) {
-    return h.kind ? p.model.pixel_of(spot, 0.0, *h.kind, h.amounts)
-                  : p.model.pixel_of(spot, 0.0, KnockKind::centre, kNoKnock);
+    return h.kind ? p.model->pixel_of(spot, 0.0, *h.kind, h.amounts)
+                  : p.model->pixel_of(spot, 0.0, KnockKind::centre, kNoKnock);
   };
   std::optional<TellApart> best;
   for (int r = 1; r <= 16; ++r) {
@@ -481,13 +518,120 @@ std::optional<std::vector<double>> fit_knock(const KnockModel& model,
   return fit->amounts;
 }
 
+namespace {
+
+/// A knock, or none, with the rows that stand out beside it.
+struct Explained {
+  std::vector<double> amounts;
+  std::vector<double> amounts_sd;
+  Eigen::VectorXd raw;
+  OddRows odd;
+  int parameters = 0;  ///< of the knock alone
+  std::optional<double> criterion;
+};
+
+/// -2 ln L corrected, an odd row counting as free: its values are parameters, and which rows they
+/// are is one choice among all.
+std::optional<double> criterion_of(
+    const Problem& p, double q, int parameters, const OddRows& odd, const SightingNoise& noise) {
+  const auto n = static_cast<double>(p.rows.size());
+  const auto k = static_cast<double>(odd.rows.size());
+  const double choices = std::lgamma(n + 1.0) - std::lgamma(k + 1.0) - std::lgamma(n - k + 1.0);
+  return corrected_criterion(minus_two_log_likelihood(q, p.values, noise) + 2.0 * choices,
+                             parameters + odd.values,
+                             p.values);
+}
+
+Problem without(const Problem& p, const OddRows& odd, const SightingNoise& noise) {
+  std::vector<Sighting> rest;
+  for (std::size_t i = 0; i < p.rows.size(); ++i) {
+    if (std::find(odd.rows.begin(), odd.rows.end(), i) == odd.rows.end()) rest.push_back(p.rows[i]);
+  }
+  return make_problem(*p.model, rest, noise);
+}
+
+/// The knock fitted, twice where rows stand out from the first fit.
+std::optional<Explained> explain(const Problem& p,
+                                 const KnockInfo& info,
+                                 const SightingNoise& noise,
+                                 double p_odd,
+                                 std::size_t most_odd) {
+  auto fit = fit_best(p, info);
+  if (!fit) return std::nullopt;
+  Explained out;
+  out.parameters = info.amounts;
+  out.odd = find_odd_rows(p, fit->raw, info.amounts, noise, p_odd, most_odd);
+  for (int round = 0; round < 2 && !out.odd.rows.empty(); ++round) {
+    const auto again = fit_best(without(p, out.odd, noise), info);
+    if (!again) break;
+    const auto raw = residuals(p, info.kind, again->amounts);
+    if (!raw) break;
+    fit->amounts = again->amounts;
+    fit->amounts_sd = again->amounts_sd;
+    fit->raw = *raw;
+    const OddRows before = out.odd;
+    out.odd = find_odd_rows(p, fit->raw, info.amounts, noise, p_odd, most_odd);
+    if (out.odd.rows == before.rows) break;
+  }
+  out.amounts = fit->amounts;
+  out.amounts_sd = fit->amounts_sd;
+  out.raw = fit->raw;
+  out.criterion = criterion_of(p, out.odd.q, info.amounts, out.odd, noise);
+  return out;
+}
+
+/// 'Nothing wrong' with exactly these rows left out.
+double q_without(const Problem& p, const Eigen::VectorXd& raw, const OddRows& odd) {
+  Trimmed rest(p, raw);
+  for (const std::size_t row : odd.rows) rest.take_out(row);
+  return rest.q();
+}
+
+double rms_without(const Problem& p, Eigen::VectorXd raw, const OddRows& odd) {
+  for (const std::size_t row : odd.rows) raw.segment(p.first[row], size_of(p, row)).setZero();
+  return std::sqrt(raw.squaredNorm() / std::max(1, p.values - odd.values));
+}
+
+std::size_t most_odd_rows(const Problem& p) {
+  return std::max<std::size_t>(1, std::min(kMostOddRows, p.rows.size() / 5));
+}
+
+/// The pixel and tape noise that the residuals show once the knock that explains most, and rows
+/// that stand out, are taken away; `noise` counts like its prior values. What the calibration is
+/// uncertain by does not grow with them.
+SightingNoise noise_seen(const Problem& p, const SightingNoise& noise, double p_odd) {
+  const Eigen::VectorXd base = *residuals(p, KnockKind::centre, kNoKnock);
+  const OddRows none = find_odd_rows(p, base, 0, noise, p_odd, most_odd_rows(p));
+  double q = none.q;
+  int left = p.values - none.values;
+  for (const KnockInfo& info : kKnocks) {
+    const auto e = explain(p, info, noise, p_odd, most_odd_rows(p));
+    if (!e) continue;
+    const int here = p.values - e->odd.values - e->parameters;
+    if (here > 0 && e->odd.q / here < q / std::max(1, left)) {
+      q = e->odd.q;
+      left = here;
+    }
+  }
+  const double scale = std::sqrt((noise.prior_values + q) / (noise.prior_values + left));
+  SightingNoise seen = noise;
+  seen.pixel_sd *= scale;
+  seen.tape_sd_m *= scale;
+  return seen;
+}
+
+}  // namespace
+
 Diagnosis diagnose(const KnockModel& model,
                    std::span<const Sighting> sightings,
-                   const SightingNoise& noise,
+                   const SightingNoise& expected,
                    double far_m,
                    const std::function<bool(FloorSpot)>& visible) {
   Diagnosis diagnosis;
-  const Problem p = make_problem(model, sightings, noise);
+  const double hypotheses = static_cast<double>(kKnocks.size()) + 1.0;
+  const double p_odd = kSignificance / hypotheses;
+  SightingNoise noise = expected;
+  Problem p = make_problem(model, sightings, noise);
   diagnosis.sightings = static_cast<int>(p.rows.size());
   if (diagnosis.sightings < kLeastSightings) {
     diagnosis.silence = fmt::format("{} found rows are too few to look for a cause; {} are needed",
@@ -495,9 +639,18 @@ Diagnosis diagnose(const KnockModel& model,
                                     kLeastSightings);
     return diagnosis;
   }
+  for (int round = 0; round < 2; ++round) {
+    const double before = noise.pixel_sd;
+    const SightingNoise seen = noise_seen(p, noise, p_odd);
+    // Small changes are within the scale's own uncertainty, which the likelihood carries.
+    if (std::abs(std::log(seen.pixel_sd / before)) < 0.2) break;
+    noise = seen;
+    p = make_problem(model, sightings, noise);
+  }
   const Eigen::VectorXd base = *residuals(p, KnockKind::centre, kNoKnock);
   const double q0 = whitened(p, base).squaredNorm();
   diagnosis.rms_px = rms_of(base);
+  diagnosis.noise_px = noise.pixel_sd;
 
   std::vector<Hypothesis> all;
   {
@@ -509,82 +662,67 @@ Diagnosis diagnose(const KnockModel& model,
     all.push_back(none);
   }
   const double none_criterion = all.front().criterion;
-  // Every knock, and wrong rows.
-  const double hypotheses = static_cast<double>(kKnocks.size()) + 1.0;
+  double simpler_left = std::numeric_limits<double>::infinity();
+  double simpler_criterion = 0.0;
   for (const KnockInfo& info : kKnocks) {
-    const auto fit = fit_best(p, info);
-    if (!fit) continue;
+    const auto e = explain(p, info, noise, p_odd, most_odd_rows(p));
+    if (!e || !e->criterion) continue;
     Hypothesis h;
     h.id = info.id;
     h.kind = info.kind;
-    h.cause = knock_text(info.kind, fit->amounts);
-    h.amounts = fit->amounts;
-    h.amounts_sd = fit->amounts_sd;
+    h.cause = knock_text(info.kind, e->amounts);
+    h.amounts = e->amounts;
+    h.amounts_sd = e->amounts_sd;
     h.parameters = info.amounts;
-    const auto criterion = corrected_criterion(
-        minus_two_log_likelihood(fit->q, p.values, noise), h.parameters, p.values);
-    if (!criterion) continue;
-    h.criterion = *criterion;
-    h.explained = q0 > 0.0 ? 1.0 - fit->q / q0 : 0.0;
-    h.rms_px = rms_of(fit->raw);
-    h.p = shift_px(p, info.kind, fit->amounts) < kLeastShiftPx
-              ? 1.0
-              : std::min(1.0,
-                         hypotheses * chance(q0 - fit->q, fit->q, h.parameters, p.values, noise));
+    h.criterion = *e->criterion;
+    h.rms_px = rms_without(p, e->raw, e->odd);
+    h.rows = wrong_rows(p, e->odd, info.kind, e->amounts);
+    // Held against 'nothing wrong' on the same rows.
+    const double q_none = q_without(p, base, e->odd);
+    const int values = p.values - e->odd.values;
+    h.explained = q_none > 0.0 ? std::max(0.0, 1.0 - e->odd.q / q_none) : 0.0;
+    h.p =
+        shift_px(p, info.kind, e->amounts) < kLeastShiftPx
+            ? 1.0
+            : std::min(
+                  1.0,
+                  hypotheses *
+                      chance(
+                          std::max(0.0, q_none - e->odd.q), e->odd.q, h.parameters, values, noise));
+    if (info.kind == KnockKind::focal || info.kind == KnockKind::eye_height) {
+      if (h.criterion < simpler_criterion || !std::isfinite(simpler_left)) {
+        simpler_left = e->odd.q;
+        simpler_criterion = h.criterion;
+      }
+    }
+    if (info.kind == KnockKind::mirror && std::isfinite(simpler_left)) {
+      // Another mirror can imitate every change along the radius, so it is named only where none
+      // of the simpler ones will do.
+      const double gain = std::max(0.0, simpler_left - e->odd.q);
+      if (chance(gain, e->odd.q, 1, values - 1, noise) > kMirrorChance) {
+        h.p = 1.0;
+        h.criterion = std::max(h.criterion, simpler_criterion + 1e-6);
+      }
+    }
     all.push_back(std::move(h));
   }
-  const std::size_t most_odd =
-      std::max<std::size_t>(1, std::min<std::size_t>(4, p.rows.size() / 5));
-  {
-    const OddRows odd = find_odd_rows(p, base, 0, noise, kSignificance / hypotheses, most_odd);
-    if (!odd.rows.empty()) {
-      Hypothesis h;
-      h.id = "tape";
-      h.rows = wrong_rows(p, odd, KnockKind::centre, kNoKnock);
-      h.cause = rows_text(h.rows);
-      h.parameters = odd.values;
-      // Which rows are wrong is fitted too: one choice among all.
-      const auto n = static_cast<double>(p.rows.size());
-      const auto k = static_cast<double>(odd.rows.size());
-      const double choices = std::lgamma(n + 1.0) - std::lgamma(k + 1.0) - std::lgamma(n - k + 1.0);
-      const auto criterion = corrected_criterion(
-          minus_two_log_likelihood(odd.q, p.values, noise) + 2.0 * choices, h.parameters, p.values);
-      if (criterion) {
-        h.criterion = *criterion;
-        h.explained = q0 > 0.0 ? 1.0 - odd.q / q0 : 0.0;
-        h.p = std::min(1.0, hypotheses * *std::min_element(odd.p.begin(), odd.p.end()));
-        Eigen::VectorXd rest = base;
-        for (const std::size_t row : odd.rows) {
-          rest.segment(p.first[row], p.rows[row].bearing_known ? 2 : 1).setZero();
-        }
-        h.rms_px = std::sqrt(rest.squaredNorm() / (p.values - odd.values));
-        all.push_back(std::move(h));
-      }
+  if (const OddRows odd = find_odd_rows(p, base, 0, noise, p_odd, most_odd_rows(p));
+      !odd.rows.empty()) {
+    Hypothesis h;
+    h.id = "tape";
+    h.rows = wrong_rows(p, odd, KnockKind::centre, kNoKnock);
+    h.cause = rows_text(h.rows);
+    h.parameters = odd.values;
+    if (const auto criterion = criterion_of(p, odd.q, 0, odd, noise)) {
+      h.criterion = *criterion;
+      h.explained = q0 > 0.0 ? 1.0 - odd.q / q0 : 0.0;
+      h.p = std::min(1.0, hypotheses * *std::min_element(odd.p.begin(), odd.p.end()));
+      h.rms_px = rms_without(p, base, odd);
+      all.push_back(std::move(h));
     }
   }
   for (Hypothesis& h : all) h.evidence = none_criterion - h.criterion;
 
-  // Another mirror can imitate every change along the radius, so it is named only where none of the
-  // simpler ones will do.
-  const auto find = [&](std::string_view id) -> Hypothesis* {
-    for (Hypothesis& h : all) {
-      if (h.id == id) return &h;
-    }
-    return nullptr;
-  };
-  if (Hypothesis* mirror = find("mirror")) {
-    for (const std::string_view simpler : {"focal", "eye_height"}) {
-      const Hypothesis* h = find(simpler);
-      if (h == nullptr) continue;
-      const double left = (1.0 - mirror->explained) * q0;
-      const double gain = (1.0 - h->explained) * q0 - left;
-      if (chance(std::max(0.0, gain), left, 1, p.values - 1, noise) > 0.01) {
-        mirror->p = 1.0;
-        mirror->criterion = std::max(mirror->criterion, h->criterion + 1e-6);
-      }
-    }
-    mirror->evidence = none_criterion - mirror->criterion;
-  }
   const auto named = [](const Hypothesis& h) { return h.id != "none" && h.p < kSignificance; };
   // Named ones first, by criterion; then the others.
   std::stable_sort(all.begin(), all.end(), [&](const Hypothesis& a, const Hypothesis& b) {
@@ -599,15 +737,7 @@ Diagnosis diagnose(const KnockModel& model,
     if (diagnosis.causes > 1) {
       diagnosis.tell_apart = where_they_differ(p, all[0], all[1], noise, far_m, visible);
     }
-    if (all.front().kind) {
-      const Hypothesis& cause = all.front();
-      const auto raw = residuals(p, *cause.kind, cause.amounts);
-      diagnosis.odd_rows =
-          wrong_rows(p,
-                     find_odd_rows(p, *raw, cause.parameters, noise, kOddRow, most_odd),
-                     *cause.kind,
-                     cause.amounts);
-    }
+    if (all.front().kind) diagnosis.odd_rows = all.front().rows;
   } else {
     // 'Nothing wrong' leads when nothing is named.
     std::stable_partition(

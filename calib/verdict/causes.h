@@ -45,7 +45,7 @@ struct Hypothesis {
   std::optional<KnockKind> kind;
   std::vector<double> amounts;     ///< as KnockInfo says
   std::vector<double> amounts_sd;  ///< one standard deviation each
-  std::vector<WrongRow> rows;      ///< of id "tape"
+  std::vector<WrongRow> rows;      ///< wrong rows: of id "tape" all it says, else beside the knock
   int parameters = 0;
   double criterion = 0.0;  ///< corrected information criterion; smaller is better
   double evidence = 0.0;   ///< criterion of 'nothing wrong' minus this one: larger is stronger
@@ -71,7 +71,8 @@ struct Diagnosis {
   /// Rows that stand out beside the cause itself.
   std::vector<WrongRow> odd_rows;
   int sightings = 0;
-  double rms_px = 0.0;  ///< before any explanation, per coordinate
+  double rms_px = 0.0;    ///< before any explanation, per coordinate
+  double noise_px = 0.0;  ///< one standard deviation of a place, as the residuals show it
   /// Why nothing could be said, when so: too few rows.
   std::string silence;
 };
@@ -86,13 +87,14 @@ inline constexpr int kMostSightings = 250;
 ///
 /// Residuals are whitened with pixel noise, the tape's noise carried into the image and the
 /// calibration's own uncertainty (the model's modes), so that an uncertain calibration is not taken
-/// for a knock. The noise scale is unknown with a prior around `noise`: -2 ln L = (v + n) ln(1 +
-/// Q/v) with v = prior_values (the marginal of a scaled inverse chi-square prior). Compared by the
-/// corrected criterion of Hurvich and Tsai (1989); a cause is only named when an F test against
-/// 'nothing wrong', multiplied by the number of hypotheses (Bonferroni), says so. `visible` tells
-/// which floor places a further mark could be measured at; `far_m` how far out.
-/// Assumes one cause (and perhaps odd rows) and rows independent of each other; a tape laid from a
-/// wrong zero looks like a knock.
+/// for a knock. Pixel and tape noise are scaled to what the residuals show beside the best
+/// explanation; the scale stays unknown with a prior around that: -2 ln L = (v + n) ln(1 + Q/v)
+/// with v = prior_values (the marginal of a scaled inverse chi-square prior). Rows that stand out
+/// from an explanation count as free in it. Compared by the corrected criterion of Hurvich and Tsai
+/// (1989); a cause is only named when an F test against 'nothing wrong', multiplied by the number
+/// of hypotheses (Bonferroni), says so. `visible` tells which floor places a further mark could be
+/// measured at; `far_m` how far out. Assumes one cause (and perhaps odd rows) and rows independent
+/// of each other; a tape laid from a wrong zero looks like a knock.
 [[nodiscard]] Diagnosis diagnose(const KnockModel& model,
                                  std::span<const Sighting> sightings,
                                  const SightingNoise& noise,
