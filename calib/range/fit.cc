@@ -231,37 +231,38 @@ class ModelFit {
     const std::size_t n = marks_.size();
     std::vector<char>& used = fitted.used;
     if (std::count(used.begin(), used.end(), 1) == 0) {
-      refuse(fitted, "no mark can be seen where the drawing has the mirror");
+      refuse(fitted, "none of the marks lies on the curve that the fit starts from");
       return false;
     }
-    LeastSquaresSolution robust = solve(problem(used, 2.0));
+    // Plain squares first: from the bare start, with so much known beforehand, a robust loss may
+    // take a far mark that ought to move the parameters for a wrong one.
+    const LeastSquaresSolution first = solve(problem(used, 0.0));
+    if (first.usable) {
+      params_ = first.shared;
+      // Of so few marks none can be called wrong while all of them together are likely enough.
+      constexpr std::size_t kFew = 5;
+      const Information sum = information(used);
+      if (n <= kFew && chi_square_tail(chi_square(sum), std::max(1.0, freedom(sum))) > 0.01) {
+        return scale_noise(fitted);
+      }
+    }
+    const LeastSquaresSolution robust = solve(problem(used, 2.0));
     if (!robust.usable) {
       refuse(fitted, "the fit does not settle");
       return false;
     }
     params_ = robust.shared;
-    double scale = 1.0;
     for (int round = 0; round < 10; ++round) {
-      const std::vector<Outlook> list = outlook(used);
-      // The bulk of the marks says how large the noise is before any of them is called wrong.
-      const double bulk = bulk_scale(list);
-      const double chance = 0.02 / static_cast<double>(n);
+      const std::vector<char> wrong = contradicted(used);
       std::vector<char> next(n, 1);
-      std::size_t aside = 0;
-      for (std::size_t i = 0; i < n; ++i) {
-        const double square = list[i].square / (bulk * bulk);
-        const double p =
-            values_of(i) == 2 ? std::exp(-0.5 * square) : std::erfc(std::sqrt(0.5 * square));
-        next[i] = list[i].seen && p >= chance ? 1 : 0;
-        if (next[i] == 0) ++aside;
-      }
-      if (2 * aside >= n && n > 1) {
+      for (std::size_t i = 0; i < n; ++i) next[i] = wrong[i] != 0 ? 0 : 1;
+      if (2 * std::count(wrong.begin(), wrong.end(), 1) >= static_cast<std::ptrdiff_t>(n) &&
+          n > 1) {
         // Most cannot be wrong: the model or the noise is. Keep what the robust fit found.
-        if (round == 0) {
-          std::fill(next.begin(), next.end(), 1);
-          for (std::size_t i = 0; i < n; ++i) next[i] = list[i].seen ? 1 : 0;
-        } else {
+        if (round > 0) {
           next = used;
+        } else {
+          for (std::size_t i = 0; i < n; ++i) next[i] = marks_[i]->linear(*model_, params_) ? 1 : 0;
         }
       }
       const bool same = next == used && round > 0;
@@ -274,7 +275,29 @@ class ModelFit {
       params_ = plain.shared;
       if (same) break;
     }
-    // Noise larger than assumed: the band has to say so.
+    return scale_noise(fitted);
+  }
+
+  /// The marks that the others contradict, as the parameters are now.
+  [[nodiscard]] std::vector<char> contradicted(const std::vector<char>& used) const {
+    const std::vector<Outlook> list = outlook(used);
+    // The bulk of the marks says how large the noise is before any of them is called wrong.
+    const double bulk = bulk_scale(list);
+    const double chance = 0.02 / static_cast<double>(list.size());
+    std::vector<char> wrong(list.size(), 0);
+    for (std::size_t i = 0; i < list.size(); ++i) {
+      const double square = list[i].square / (bulk * bulk);
+      const double p =
+          values_of(i) == 2 ? std::exp(-0.5 * square) : std::erfc(std::sqrt(0.5 * square));
+      wrong[i] = !list[i].seen || p < chance ? 1 : 0;
+    }
+    return wrong;
+  }
+
+  /// Noise larger than assumed: the band has to say so.
+  bool scale_noise(Fitted& fitted) {
+    const std::vector<char>& used = fitted.used;
+    double scale = 1.0;
     for (int round = 0; round < 3; ++round) {
       const Information sum = information(used);
       const double dof = freedom(sum);
@@ -587,6 +610,44 @@ bool clearly_better(const Fitted& later, const Fitted& first, const std::vector<
   return mean > student_quantile(0.975, n - 1) * std::sqrt(variance);
 }
 
+/// A drawing with everything in it, unless another model is clearly better: what is known
+/// beforehand is worth more than a close call. Without a drawing the model with the smallest
+/// leave-one-out error; near ties go to fewer parameters. Nothing where none can be used.
+const Fitted* choose(const std::vector<Fitted>& all) {
+  constexpr double kTie = 1.25;
+  std::vector<const Fitted*> running;
+  for (const Fitted& fitted : all) {
+    if (fitted.refused.empty()) running.push_back(&fitted);
+  }
+  if (running.empty()) return nullptr;
+  // A model must not win by setting marks aside: those count that most models keep.
+  std::vector<char> counted(running.front()->used.size(), 0);
+  for (std::size_t i = 0; i < counted.size(); ++i) {
+    const auto keep = std::count_if(
+        running.begin(), running.end(), [&](const Fitted* f) { return f->used[i] != 0; });
+    counted[i] = 2 * keep >= static_cast<std::ptrdiff_t>(running.size()) ? 1 : 0;
+  }
+  const Fitted* chosen = running.front();
+  if (chosen->row->needs_drawing) {
+    for (const Fitted* fitted : running) {
+      if (clearly_better(*fitted, *chosen, counted)) chosen = fitted;
+    }
+    return chosen;
+  }
+  for (const Fitted* fitted : running) {
+    if (leave_one_out(*fitted, counted) < leave_one_out(*chosen, counted)) chosen = fitted;
+  }
+  const Fitted* best = chosen;
+  for (const Fitted* fitted : running) {
+    if (fitted->params.size() < chosen->params.size() &&
+        leave_one_out(*fitted, counted) <= kTie * leave_one_out(*best, counted) &&
+        !clearly_better(*best, *fitted, counted)) {
+      chosen = fitted;
+    }
+  }
+  return chosen;
+}
+
 }  // namespace
 
 FitResult fit_range(const FitInput& input) {
@@ -611,13 +672,7 @@ FitResult fit_range(const FitInput& input) {
     all.push_back(std::move(fitted));
   }
 
-  // Marks count for the comparison where no model that could be fitted set them aside... except
-  // that a model must not win by discarding: what the best-informed model keeps is what counts.
-  const Fitted* chosen = nullptr;
-  for (const Fitted& fitted : all) {
-    if (!fitted.refused.empty()) continue;
-    if (chosen == nullptr || clearly_better(fitted, *chosen, chosen->used)) chosen = &fitted;
-  }
+  const Fitted* chosen = choose(all);
   if (chosen == nullptr) {
     std::vector<Problem> problems;
     for (const Fitted& fitted : all) {

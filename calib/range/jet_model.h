@@ -165,12 +165,12 @@ template <class T>
                    known ? Parameter::Prior::known : Parameter::Prior::none};
 }
 
-/// The eye's height: from the drawing, or a guess for a small robot.
+/// The eye's height: from the drawing, or a guess that only says it is no house.
 [[nodiscard]] inline Parameter eye_parameter(const ModelInput& input) {
   const std::optional<Uncertain> eye = input.rig.mounting.eye_height_m;
   return Parameter{"eye_height_m",
-                   eye ? eye->value : 0.2,
-                   eye ? std::max(eye->sd, 1e-6) : 0.1,
+                   eye ? eye->value : 0.3,
+                   eye ? std::max(eye->sd, 1e-6) : 0.5,
                    1e3,
                    "eye height",
                    "mm",

@@ -74,10 +74,19 @@ std::string curve_chart(const Workspace& workspace,
     const auto index = r["mark"].as<std::size_t>();
     if (index >= workspace.marks.size()) continue;
     const Mark& mark = workspace.marks[index];
+    // What is seen at a height is brought down to the floor along its line of sight.
+    const ObjectSpec* object = workspace.venue.find_object(mark.object);
+    double to_floor = 1.0;
+    if (object != nullptr && object->seen_height_m() > 0.0) {
+      const auto floor = curve.floor_at(mark.pixel, 0.0);
+      const auto raised = curve.floor_at(mark.pixel, object->seen_height_m());
+      if (!floor || !raised) continue;
+      to_floor = floor->range_m / raised->range_m;
+    }
     const auto point = xy(rounded(std::hypot(mark.pixel.u_px - curve.centre().u_px,
                                              mark.pixel.v_px - curve.centre().v_px),
                                   0.01),
-                          mark.range_m);
+                          rounded(mark.range_m * to_floor, 1e-4));
     (r["flagged"].as<bool>() ? flagged : used).push_back(point);
   }
   ordered_json sets = ordered_json::array();
@@ -114,16 +123,15 @@ std::string curve_chart(const Workspace& workspace,
                     {"borderColor", "bad"},
                     {"backgroundColor", "bad"}});
   }
-  return chart(
-      {{"type", "scatter"},
-       {"data", {{"datasets", sets}}},
-       {"options",
-        {{"scales",
-          {{"x", axis("radius from the centre, px")},
-           {"y", axis("range on the floor, m", true)}}}}}},
-      "Range against image radius with the marks and the 95 % band",
-      "Range against image radius on the floor. Marks of objects seen at a height lie beside "
-      "the floor's curve: height makes things look farther away.");
+  return chart({{"type", "scatter"},
+                {"data", {{"datasets", sets}}},
+                {"options",
+                 {{"scales",
+                   {{"x", axis("radius from the centre, px")},
+                    {"y", axis("range on the floor, m", true)}}}}}},
+               "Range against image radius with the marks and the 95 % band",
+               "Range against image radius on the floor; marks of objects seen at a height are "
+               "brought down to it along their line of sight.");
 }
 
 std::string residual_chart(const Workspace& workspace, const YAML::Node& root) {
@@ -187,21 +195,27 @@ std::string parameters_table(const YAML::Node& root) {
 
 std::string candidates_table(const YAML::Node& root, const std::string& chosen) {
   std::vector<std::vector<std::string>> rows = {
-      {"model", "parameters", "RMS, px", "left out, % of range", "remark"}};
+      {"model", "parameters", "RMS, px", "left out, % of range", ""}};
+  std::string refusals;
   for (const auto& c : root["candidates"]) {
     const auto model = c["model"].as<std::string>();
     const auto refused = c["refused"].as<std::string>();
+    if (!refused.empty()) {
+      refusals += fmt::format("{}{}: {}", refusals.empty() ? "Not used: " : "; ", model, refused);
+      continue;
+    }
     rows.push_back({model,
                     std::to_string(c["parameters"].as<int>()),
-                    refused.empty() ? fmt::format("{:.2f}", c["rms_px"].as<double>()) : "",
-                    refused.empty()
-                        ? fmt::format("{:.2f}", 100.0 * c["leave_one_out_relative"].as<double>())
-                        : "",
-                    model == chosen ? "chosen" : refused});
+                    fmt::format("{:.2f}", c["rms_px"].as<double>()),
+                    fmt::format("{:.2f}", 100.0 * c["leave_one_out_relative"].as<double>()),
+                    model == chosen ? "chosen" : ""});
   }
-  return table(rows,
-               "The models that were tried. The first that fits is kept unless a later one "
-               "predicts left-out marks clearly better.");
+  std::string html = table(rows,
+                           "The models that were tried. A drawing is kept unless another predicts "
+                           "left-out marks clearly better; without one the best is taken, near "
+                           "ties by fewer parameters.");
+  if (!refusals.empty()) html += paragraph(refusals + ".");
+  return html;
 }
 
 }  // namespace
