@@ -33,16 +33,18 @@ ObjectSpec read_object(const YamlMap& objects, const std::string& name) {
   const auto map = objects.map(name);
   if (!map) return object;
   map->allow({"shape", "diameter_mm", "width_mm", "height_mm"});
-  if (map->require("shape", "write ball, box or post")) {
-    object.shape = static_cast<Shape>(map->word("shape", {"ball", "box", "post"}).value_or(0));
-  }
+  const auto shape = map->require("shape", "write ball, box or post")
+                         ? map->word("shape", {"ball", "box", "post"})
+                         : std::nullopt;
+  object.shape = static_cast<Shape>(shape.value_or(0));
   const Limits size_mm = {0.0, 5000.0, true};
   if (object.shape == Shape::ball) {
-    if (map->has("width_mm"))
+    if (shape && map->has("width_mm")) {
       map->complain("width_mm", "is for boxes and posts; a ball has its diameter_mm");
+    }
     if (map->has("diameter_mm")) {
       object.diameter_m = map->number("diameter_mm", size_mm).value_or(0.0) / 1000.0;
-    } else if (map->has("shape")) {
+    } else if (shape) {
       (void)map->require("diameter_mm", "a ball is seen at the height of its radius");
     }
   } else {
@@ -172,13 +174,13 @@ std::optional<CentreOverride> read_centre_override(const YamlMap& top) {
   const auto map = top.map("centre");
   if (!map) return std::nullopt;
   map->allow({"u_px", "v_px", "sd_px"});
-  const bool both = map->require("u_px", "write both u_px and v_px") &
-                    map->require("v_px", "write both u_px and v_px");
+  const bool has_u = map->require("u_px", "write both u_px and v_px");
+  const bool has_v = map->require("v_px", "write both u_px and v_px");
   const Limits in_image = {-0.5, 20000.0, false};
   const auto u_px = map->number("u_px", in_image);
   const auto v_px = map->number("v_px", in_image);
   const double sd_px = map->number("sd_px", {0.0, 100.0, true}).value_or(0.2);
-  if (!both || !u_px || !v_px) return std::nullopt;
+  if (!has_u || !has_v || !u_px || !v_px) return std::nullopt;
   return CentreOverride{{*u_px, *v_px}, sd_px};
 }
 

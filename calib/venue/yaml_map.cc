@@ -1,10 +1,12 @@
 #include "calib/venue/yaml_map.h"
 
 #include <fmt/format.h>
+#include <yaml-cpp/eventhandler.h>
 
 #include <algorithm>
 #include <cmath>
 #include <set>
+#include <sstream>
 #include <utility>
 
 #include "calib/base/file.h"
@@ -32,6 +34,44 @@ const char* kind_of(const YAML::Node& node) {
 
 bool in_quotes(const YAML::Node& node) { return node.Tag() == "!"; }
 
+/// Where a text's documents begin.
+class DocumentStarts : public YAML::EventHandler {
+ public:
+  std::vector<int> lines;
+  void OnDocumentStart(const YAML::Mark& mark) override {
+    lines.push_back(std::max(0, mark.line) + 1);
+  }
+  void OnDocumentEnd() override {}
+  void OnNull(const YAML::Mark& /*mark*/, YAML::anchor_t /*anchor*/) override {}
+  void OnAlias(const YAML::Mark& /*mark*/, YAML::anchor_t /*anchor*/) override {}
+  void OnScalar(const YAML::Mark& /*mark*/,
+                const std::string& /*tag*/,
+                YAML::anchor_t /*anchor*/,
+                const std::string& /*value*/) override {}
+  void OnSequenceStart(const YAML::Mark& /*mark*/,
+                       const std::string& /*tag*/,
+                       YAML::anchor_t /*anchor*/,
+                       YAML::EmitterStyle::value /*style*/) override {}
+  void OnSequenceEnd() override {}
+  void OnMapStart(const YAML::Mark& /*mark*/,
+                  const std::string& /*tag*/,
+                  YAML::anchor_t /*anchor*/,
+                  YAML::EmitterStyle::value /*style*/) override {}
+  void OnMapEnd() override {}
+};
+
+/// The line at which something follows the first document; 0 when nothing does. (Asking for all
+/// documents at once never ends where a stray bracket stands between them: the library gives one
+/// empty document after the other.)
+int line_of_second_document(std::string_view text) {
+  std::istringstream in{std::string(text)};
+  YAML::Parser parser(in);
+  DocumentStarts starts;
+  for (int i = 0; i < 2 && parser.HandleNextDocument(starts); ++i) {
+  }
+  return starts.lines.size() > 1 ? starts.lines[1] : 0;
+}
+
 /// The map that `text` holds, or a null node and a problem.
 YAML::Node parsed(std::string_view text, const std::string& file, std::vector<Problem>& problems) {
   if (text.size() > kLargestFile) {
@@ -43,23 +83,24 @@ YAML::Node parsed(std::string_view text, const std::string& file, std::vector<Pr
     return {};
   }
   try {
-    const std::vector<YAML::Node> documents = YAML::LoadAll(std::string(text));
-    if (documents.empty() || documents.front().IsNull()) {
+    const YAML::Node document = YAML::Load(std::string(text));
+    if (document.IsNull()) {
       problems.push_back({file, "is empty; 'rondel new' shows what it may hold"});
       return {};
     }
-    if (documents.size() > 1) {
-      problems.push_back({fmt::format("{}:{}", file, line_of(documents[1])),
-                          "a second document begins; remove the line '---' before it"});
+    if (const int line = line_of_second_document(text); line > 0) {
+      problems.push_back({fmt::format("{}:{}", file, line),
+                          "what begins here belongs to nothing above; check brackets and "
+                          "indentation, and leave no line '---'"});
       return {};
     }
-    if (!documents.front().IsMap()) {
-      problems.push_back({fmt::format("{}:{}", file, line_of(documents.front())),
-                          fmt::format("the file holds {}; it must hold 'key: value' lines",
-                                      kind_of(documents.front()))});
+    if (!document.IsMap()) {
+      problems.push_back(
+          {fmt::format("{}:{}", file, line_of(document)),
+           fmt::format("the file holds {}; it must hold 'key: value' lines", kind_of(document))});
       return {};
     }
-    return documents.front();
+    return document;
   } catch (const YAML::Exception& error) {
     problems.push_back({fmt::format("{}:{}", file, std::max(0, error.mark.line) + 1),
                         fmt::format("cannot be read as YAML ({}); check colons, brackets and "
@@ -84,10 +125,7 @@ YamlMap::YamlMap(std::string_view text, std::string file, std::vector<Problem>& 
 }
 
 YamlMap::YamlMap(const YamlMap& parent, const YAML::Node& node, std::string path)
-    : node_(node),
-      path_(std::move(path)),
-      file_(parent.file_),
-      problems_(parent.problems_) {
+    : node_(node), path_(std::move(path)), file_(parent.file_), problems_(parent.problems_) {
   check_keys_once();
 }
 

@@ -128,7 +128,8 @@ Arguments parse(const Command& command, const std::vector<std::string>& line) {
       binding.option = parser.add_flag(std::string(flag.name));
     } else {
       binding.option = parser.add_option(std::string(flag.name), binding.values);
-      binding.option->expected(1)->take_all();
+      // One value each time: what follows is a word again.
+      binding.option->expected(1)->take_all()->allow_extra_args(false);
     }
   };
   for (const Flag& flag : command.flags) bind(flag);
@@ -138,6 +139,15 @@ Arguments parse(const Command& command, const std::vector<std::string>& line) {
   Arguments arguments;
   // All after "--" are words whatever they look like; the parser below never sees them.
   const auto marker = std::find(line.begin(), line.end(), "--");
+  for (auto word = line.begin(); word != marker; ++word) {
+    const std::size_t equals = word->find('=');
+    for (const Binding& binding : bindings) {
+      if (equals != std::string::npos && binding.flag->value.empty() &&
+          binding.flag->name == std::string_view(*word).substr(0, equals)) {
+        complaints.add(std::string(binding.flag->name) + " takes no value");
+      }
+    }
+  }
   std::vector<std::string> reversed;
   for (auto word = marker; word != line.begin();) reversed.push_back(*--word);
   try {

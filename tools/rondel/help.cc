@@ -261,18 +261,20 @@ std::string command_help(const Command& command) {
 }
 
 std::string help_as_markdown() {
+  const auto in_table = [](std::string_view text) {
+    std::string escaped;
+    for (const char c : text) {
+      if (c == '|') escaped += '\\';
+      escaped += c;
+    }
+    return escaped;
+  };
   std::string out = "| command | does |\n| --- | --- |\n";
   for (const Command& command : commands()) {
-    std::string usage = usage_of(command).substr(std::string_view("rondel ").size());
-    out += fmt::format("| `{}` | {}", usage, command.brief);
+    const std::string usage = usage_of(command).substr(std::string_view("rondel ").size());
+    out += fmt::format("| `{}` | {}", in_table(usage), command.brief);
     for (const Flag& flag : command.flags) {
-      std::string shown = flag_with_value(flag);
-      std::string escaped;
-      for (const char c : shown) {
-        if (c == '|') escaped += '\\';
-        escaped += c;
-      }
-      out += fmt::format("<br>`{}` {}", escaped, flag.brief);
+      out += fmt::format("<br>`{}` {}", in_table(flag_with_value(flag)), flag.brief);
     }
     out += " |\n";
   }

@@ -51,6 +51,7 @@ std::string rig_template() {
   return R"(# The robot's optics. Copied from venue to venue: it stays while the robot stays as it is.
 # Lengths in millimetres, angles in degrees. A value is a bare number, or says how far off it may be
 # (one standard deviation): {value: 260, tolerance: 5}. A bare number has the tolerance in (brackets).
+# To fill something in, take away the '# ' in front of it, the blank too.
 
 camera:
   width_px: 320               # size of the frames; frames of another size are refused
@@ -59,7 +60,7 @@ camera:
   # rgb565_order: high_first  # byte order of raw *.565 dumps: high_first or low_first
 
 # The mirror, as drawn. All of it may stay out: then nothing is known but what the marks say.
-# With it, a first range curve needs no marks at all, and a handful of marks correct it.
+# With it, focal_px and eye_height_mm a first range curve needs no marks, and a handful correct it.
 # mirror:
 #   shape: conic              # conic, cone or profile
 #   rim_radius_mm: 30         # the mirror's edge, from its axis
@@ -78,12 +79,13 @@ camera:
 #   # points_file: profile.csv   # the same from a file with the columns distance_mm,sag_mm
 #   # sag_sd_mm: 0.05         # how well a height is measured; from the points' scatter when left out
 
-mounting:
-  # eye_height_mm: 160        # (3 mm) the camera's pinhole above the floor
-  # robot_radius_mm: 90       # for drawings only
-  # Both of these are found from marks that have a bearing; given here, the marks may contradict them.
-  # mirrored: true            # true: bearings grow the way the image angle from u to v does
-  heading_deg: 0              # the bearing, counter-clockwise from forward, that the image's u direction has
+# How camera and mirror sit on the robot.
+# mounting:
+#   eye_height_mm: 160        # (3 mm) the camera's pinhole above the floor
+#   robot_radius_mm: 90       # for drawings only
+#   # These two are found from marks with a bearing; say them only to have the marks held against them.
+#   mirrored: true            # bearings grow the way the image's angle from u to v does
+#   heading_deg: 0            # the image's u direction, counter-clockwise from the robot's forward
 )";
 }
 

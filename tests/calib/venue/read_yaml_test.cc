@@ -156,7 +156,11 @@ TEST(ReadRig, NamesEachMistakeAlone) {
       {"- 1\n", "rig.yaml:1: the file holds a list; it must hold 'key: value' lines"},
       {"camera\n", "rig.yaml:1: the file holds a single value; it must hold 'key: value' lines"},
       {kCamera + "---\ncamera: 1\n",
-       "rig.yaml:3: a second document begins; remove the line '---' before it"},
+       "rig.yaml:2: what begins here belongs to nothing above; check brackets and indentation, and "
+       "leave no line '---'"},
+      {kCamera + "}\n",
+       "rig.yaml:2: cannot be read as YAML (illegal flow end); check colons, brackets and "
+       "indentation (spaces, no tabs)"},
       {kCamera + "camera: {width_px: 1}\n", "rig.yaml:2: camera: the key is given twice; keep one"},
       {kCamera + "mirror:\n",
        "rig.yaml:2: mirror: has no value; write its keys below it, or remove "

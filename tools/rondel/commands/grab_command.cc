@@ -207,6 +207,9 @@ Grabbed capture_frames(const Wish& wish, const CameraSpec& camera, Progress& pro
   Grabbed grabbed;
   const int count = wish.count.value_or(kUsualCount);
   vision::Capture capture(wish.source, {camera.width_px, camera.height_px});
+  if (vision::kind_of_source(wish.source) != vision::SourceKind::video) {
+    progress.note(safety_line());
+  }
   NumberedFrames frames(wish);
   try {
     for (int i = 0; i < count; ++i) {
@@ -273,7 +276,6 @@ std::string summary_of(const Wish& wish, const Grabbed& grabbed) {
 Outcome grab_command(const Arguments& arguments, Progress& progress) {
   const Wish wish = wish_of(arguments);
   const CameraSpec camera = camera_of(wish.venue);
-  progress.note(safety_line());
   const Grabbed grabbed = grab(wish, camera, progress);
   Outcome outcome;
   outcome.document = {{"venue", wish.venue.string()},

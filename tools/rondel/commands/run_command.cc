@@ -156,10 +156,10 @@ class Run {
           kept_ ? "Nothing to do: what can be made is fresh.\n"
                 : "Nothing could be done yet: the lines above say what each step waits for.\n";
     }
+    if (anything) summary_ += fmt::format("Report: {}\n", page.string());
     summary_ += verdict == Verdict::none       ? "Verdict: none yet\n"
                 : verdict == Verdict::accepted ? "Verdict: accepted\n"
-                                               : "Verdict: not accepted\n";
-    if (anything) summary_ += fmt::format("Report: {}\n", page.string());
+                                               : "Verdict: not accepted; the report says why\n";
     document_["accepted"] = nullptr;
     if (verdict != Verdict::none) document_["accepted"] = verdict == Verdict::accepted;
     document_["report"] = nullptr;
