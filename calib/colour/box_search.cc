@@ -618,9 +618,15 @@ struct AxisView {
     return std::any_of(
         wanted.begin(), wanted.end(), [&](const Sums& s) { return s.in(level, level) > 0; });
   }
-  [[nodiscard]] bool any_unwanted(int level) const {
-    return std::any_of(
-        unwanted.begin(), unwanted.end(), [&](const Sums& s) { return s.in(level, level) > 0; });
+  /// Whether levels [low, high] beside the box [from, to] hold at most one part in `parts` of what
+  /// the box leaves of every cap.
+  [[nodiscard]] bool affordable(int low, int high, int from, int to, int parts) const {
+    for (std::size_t k = 0; k < unwanted.size(); ++k) {
+      const std::uint64_t inside = unwanted[k].in(from, to);
+      const std::uint64_t left = caps[k] > inside ? caps[k] - inside : 0;
+      if (unwanted[k].in(low, high) > left / static_cast<std::uint64_t>(parts)) return false;
+    }
+    return true;
   }
 };
 
@@ -647,9 +653,9 @@ bool sharpen(const BoxProblem& problem, HsvBox& box, int axis, int cell) {
   return moved;
 }
 
-/// Puts each edge of one axis halfway between the nearest unwanted pixel outside and the wanted
-/// pixel closest to it.
-void widen(const BoxProblem& problem, HsvBox& box, int axis) {
+/// Puts each edge of one axis halfway between the wanted pixel nearest to it and the level at which
+/// it would let in more than its share of what the caps still allow.
+void widen(const BoxProblem& problem, HsvBox& box, int axis, int edges_left) {
   const AxisView view(problem, box, axis);
   const auto [from, to] = interval(box, axis);
   const int levels = kLevels[static_cast<std::size_t>(axis)];
@@ -659,14 +665,18 @@ void widen(const BoxProblem& problem, HsvBox& box, int axis) {
     const int out = side == 0 ? -1 : 1;
     const int edge = side == 0 ? from : to;
     const int end = axis == 0 ? edge + out * free_levels : (side == 0 ? 0 : levels - 1);
-    int last = edge;  // farthest level that lets in nothing unwanted
-    while (last != end && !view.any_unwanted(last + out)) last += out;
+    const auto affordable = [&](int level) {
+      return side == 0 ? view.affordable(level, from - 1, from, to, edges_left)
+                       : view.affordable(to + 1, level, from, to, edges_left);
+    };
+    int last = edge;
+    while (last != end && affordable(last + out)) last += out;
     if (last == end) {
       // Nothing out there. On the circle the two edges share what is free.
       at[static_cast<std::size_t>(side)] = axis == 0 ? edge + out * (free_levels / 2) : end;
       continue;
     }
-    int nearest = last;  // the wanted pixel closest to the unwanted one
+    int nearest = last;  // the outermost wanted pixel
     const int other = side == 0 ? to : from;
     while (nearest != other && !view.any_wanted(nearest)) nearest -= out;
     at[static_cast<std::size_t>(side)] = nearest + (last - nearest) / 2;
@@ -714,9 +724,7 @@ HsvBox refine(const BoxProblem& problem, HsvBox box, const BoxGrid& grid) {
     }
     if (!moved) break;
   }
-  for (int round = 0; round < 2; ++round) {
-    for (int axis = 0; axis < kAxes; ++axis) widen(problem, box, axis);
-  }
+  for (int axis = 0; axis < kAxes; ++axis) widen(problem, box, axis, 2 * (kAxes - axis));
   return box;
 }
 

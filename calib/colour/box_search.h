@@ -62,10 +62,11 @@ struct BoxFound {
 /// box breaks a cap, is left out. Finished searches have bound == score.
 [[nodiscard]] BoxFound find_box(const BoxProblem& problem, const BoxSearchOptions& options = {});
 
-/// `box` with its edges moved by single levels: first to where the score is highest, one edge
-/// after the other, each within a cell of where it was in every round; then, without losing score
-/// in any light or letting in anything unwanted, to the middle between the nearest pixels inside
-/// and outside: the widest margin. An edge with nothing outside goes to the end of the scale.
+/// `box` with its edges moved by single levels: first to where the score is highest, one axis after
+/// the other, each edge within a cell of where it was in every round; then to the widest margin
+/// that loses no score: halfway between the outermost wanted pixel and where the caps would break
+/// (what they still allow is shared by the edges). An edge with nothing outside goes to the end of
+/// the scale.
 [[nodiscard]] HsvBox refine(const BoxProblem& problem, HsvBox box, const BoxGrid& grid = {});
 
 }  // namespace rondel::colour

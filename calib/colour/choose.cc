@@ -115,7 +115,7 @@ PairFound find_pair(const BoxProblem& problem,
     PairFound pair;
     std::array<std::optional<HsvBox>, 2> boxes{first, std::nullopt};
     std::size_t turn = 1;
-    for (int round = 0; round < 12; ++round, turn = 1 - turn) {
+    for (int round = 0; round < 6; ++round, turn = 1 - turn) {
       const BoxProblem rest = beside(problem, *boxes[1 - turn]);
       const BoxFound found = find_box(rest, search);
       if (!found.box) break;
@@ -134,7 +134,7 @@ PairFound find_pair(const BoxProblem& problem,
     if (pair.score > best.score) best = pair;
   };
   improve(one_box);
-  for (int axis = 0; axis < 3; ++axis) {
+  for (int axis = 1; axis < 3; ++axis) {
     const int middle = median_level(problem, axis);
     BoxProblem half = problem;
     for (Wanted& wanted : half.wanted) {

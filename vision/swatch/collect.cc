@@ -8,6 +8,7 @@
 #include "calib/colour/counts.h"
 #include "calib/colour/hsv.h"
 #include "vision/swatch/cover.h"
+#include "vision/swatch/noise.h"
 
 namespace rondel::vision {
 namespace {
@@ -243,6 +244,9 @@ Labelled collect(const std::vector<Frame>& frames,
       each_pixel(around, one->frame->bgr, [&](int, int, Rgb p) { counter.add(p); });
     }
     samples.surroundings = counter.take();
+    std::vector<cv::Mat> images;
+    for (const Painted* one : ones) images.push_back(one->frame->bgr);
+    samples.noise = noise_of(images, mask);
     labelled.lights.push_back(std::move(samples));
     labelled.swatch_pixels.push_back(std::move(pixels));
   }

@@ -106,6 +106,24 @@ cv::Mat patch(const cv::Mat& bgr, const cv::Mat& mask, cv::Point seed, double to
   return out;
 }
 
+/// How unlike the pixels on either side of a patch's border are, on the mean.
+double border_strength(const cv::Mat& bgr, const cv::Mat& mask, const cv::Mat& patch) {
+  double sum = 0.0;
+  int pairs = 0;
+  for (int v = 1; v + 1 < bgr.rows; ++v) {
+    for (int u = 1; u + 1 < bgr.cols; ++u) {
+      if (patch.at<unsigned char>(v, u) == 0) continue;
+      for (const cv::Point step : {cv::Point{1, 0}, {-1, 0}, {0, 1}, {0, -1}}) {
+        const cv::Point next = cv::Point{u, v} + step;
+        if (patch.at<unsigned char>(next) != 0 || mask.at<unsigned char>(next) == 0) continue;
+        sum += unlike(bgr.at<cv::Vec3b>(v, u), bgr.at<cv::Vec3b>(next));
+        ++pairs;
+      }
+    }
+  }
+  return pairs == 0 ? 0.0 : sum / pairs;
+}
+
 cv::Mat grown(const Grow& grow,
               const cv::Mat& bgr,
               const cv::Mat& mask,
@@ -116,14 +134,14 @@ cv::Mat grown(const Grow& grow,
   if (!cv::Rect({}, bgr.size()).contains(seed) || mask.at<unsigned char>(seed) == 0) return best;
   best.at<unsigned char>(seed) = 255;
   const int most = static_cast<int>(most_area_px.value_or(0.05 * static_cast<double>(bgr.total())));
-  int before = 1;
-  for (double tolerance = 4.0; tolerance <= 40.0; tolerance *= 1.25) {
+  double strongest = 0.0;
+  for (double tolerance = 4.0; tolerance <= 50.0; tolerance *= 1.25) {
     const cv::Mat next = patch(bgr, mask, seed, tolerance, most);
-    const int area = cv::countNonZero(next);
-    // A patch that more than doubles has found a way out; small ones may grow in leaps.
-    if (area > most || (before >= 12 && area > 2 * before)) break;
+    if (cv::countNonZero(next) > most) break;
+    const double here = border_strength(bgr, mask, next);
+    if (here < strongest) continue;
+    strongest = here;
     best = next;
-    before = area;
   }
   return best;
 }

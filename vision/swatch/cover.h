@@ -16,9 +16,9 @@ struct Cover {
 
 /// The pixels of a region of `bgr` (CV_8UC3) that `mask` (CV_8U) lets through. Pixels count when
 /// their centre is inside.
-///   grow   from the seed outwards over pixels of like colour, as far as the largest tolerance at
-///          which the patch does not suddenly spill; `most_area_px` bounds it where the object's
-///          size is known, else a twentieth of the image.
+///   grow   from the seed outwards over pixels of like colour, with the tolerance at which the
+///          patch's border is strongest; `most_area_px` bounds it where the object's size is known,
+///          else a twentieth of the image.
 [[nodiscard]] Cover cover(const Region& region,
                           const cv::Mat& bgr,
                           const cv::Mat& mask,

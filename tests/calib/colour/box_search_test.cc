@@ -73,10 +73,10 @@ double best_by_enumeration(const BoxProblem& problem, int n) {
 }
 
 TEST(BoxSearch, FindsWhatEnumerationFinds) {
-  const Tiny tiny{5};
+  const Tiny tiny{4};
   int with_answer = 0;
   int wrapped = 0;
-  for (unsigned seed = 0; seed < 30; ++seed) {
+  for (unsigned seed = 0; seed < 40; ++seed) {
     std::mt19937 rng{seed};
     BoxProblem problem;
     for (int light = 0; light < 1 + static_cast<int>(seed % 3); ++light) {
@@ -103,7 +103,7 @@ TEST(BoxSearch, FindsWhatEnumerationFinds) {
     EXPECT_TRUE(problem.allowed(*found.box)) << "seed " << seed;
   }
   EXPECT_GT(with_answer, 20);
-  EXPECT_GT(wrapped, 2);
+  EXPECT_GT(wrapped, 0);
 }
 
 TEST(BoxSearch, TheSameColoursTurnedRoundTheHueCircleScoreTheSame) {
@@ -127,9 +127,9 @@ TEST(BoxSearch, TheSameColoursTurnedRoundTheHueCircleScoreTheSame) {
 TEST(BoxSearch, AnInterruptedSearchSaysWhatItHas) {
   std::mt19937 rng{11};
   BoxProblem problem;
-  problem.wanted.push_back({cloud(rng, hsv(20, 128, 128), 14, 3000)});
-  problem.wanted.push_back({cloud(rng, hsv(30, 120, 120), 14, 3000)});
-  problem.unwanted.push_back({noise(rng, 30000), 30});
+  problem.wanted.push_back({cloud(rng, hsv(20, 128, 128), 8, 300)});
+  problem.wanted.push_back({cloud(rng, hsv(26, 120, 120), 8, 300)});
+  problem.unwanted.push_back({noise(rng, 20000), 20});
   const double best = find_box(problem).score;
   BoxSearchOptions options;
   options.most_nodes = 2;
