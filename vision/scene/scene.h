@@ -210,7 +210,9 @@ struct Scene {
 /// A scene to render at once: `rig` in a hall with mat, lanes, boards around it, a few objects
 /// ("buoy" balls of 74 mm, boxes "dock_teal" and "dock_violet", dark cylinders without a name) laid
 /// out by `seed`, lights "noon" (window), "dusk" (warm, dim) and "lamps", and `frames_per_light`
-/// frames a light between which the robot moves and turns.
+/// frames a light between which the robot moves and turns. Frames are independent: a test that
+/// wants one light or fewer frames erases the others. A frame of 320 x 240 px costs about 0.8 s of
+/// one core with nine rays a pixel, 0.3 s with `sensor.supersample = 1`.
 [[nodiscard]] Scene practice_scene(const SceneRig& rig, unsigned seed, int frames_per_light);
 
 /// Reads a scene file. Strict: every unknown key, wrong type and value out of range is reported
