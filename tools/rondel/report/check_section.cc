@@ -394,10 +394,20 @@ std::optional<Section> check_section(const Workspace& workspace) {
   const std::filesystem::path path = workspace.results() / "check.json";
   std::error_code error;
   if (!std::filesystem::is_regular_file(path, error)) return std::nullopt;
-  const ordered_json document = ordered_json::parse(read_file(path), nullptr, false);
-  if (!document.is_object() || !document.contains("measurements")) return std::nullopt;
+  // Measurements are taken one by one as they are read: an archive's would fill the memory as a
+  // tree.
   std::vector<Row> rows;
-  for (const ordered_json& row : document.at("measurements")) rows.push_back(row_of(row));
+  std::string part;
+  const ordered_json document = ordered_json::parse(
+      read_file(path),
+      [&](int depth, ordered_json::parse_event_t event, ordered_json& parsed) {
+        if (depth == 1 && event == ordered_json::parse_event_t::key) part = parsed;
+        if (part != "measurements" || event != ordered_json::parse_event_t::object_end) return true;
+        rows.push_back(row_of(parsed));
+        return false;
+      },
+      false);
+  if (!document.is_object() || !document.contains("measurements")) return std::nullopt;
 
   Section section;
   section.id = "check";

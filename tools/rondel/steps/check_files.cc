@@ -161,7 +161,9 @@ std::vector<std::size_t> worst_rows(const CheckReport& report, std::size_t image
 
 std::string xml(std::string_view plain) {
   std::string out;
-  for (const char c : plain) {
+  const auto readable =
+      ordered_json::parse(json_text(ordered_json(std::string(plain)))).get<std::string>();
+  for (const char c : readable) {
     switch (c) {
       case '&':
         out += "&amp;";
