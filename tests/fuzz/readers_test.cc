@@ -102,7 +102,7 @@ const std::vector<std::string> kRigs = {
 
 TEST(Fuzz, YamlReaders) {
   std::mt19937_64 rng{1};
-  for (int i = 0; i < 3000; ++i) {
+  for (int i = 0; i < 1500; ++i) {
     std::vector<Problem> problems;
     const std::string venue = fuzz::mutated(kVenue, kYamlTokens, rng);
     (void)read_venue(venue, "f.text", problems);
