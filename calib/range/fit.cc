@@ -614,7 +614,7 @@ bool clearly_better(const Fitted& later, const Fitted& first, const std::vector<
 /// beforehand is worth more than a close call. Without a drawing the model with the smallest
 /// leave-one-out error; near ties go to fewer parameters. Nothing where none can be used.
 const Fitted* choose(const std::vector<Fitted>& all) {
-  constexpr double kTie = 1.25;
+  constexpr double kTie = 1.1;
   std::vector<const Fitted*> running;
   for (const Fitted& fitted : all) {
     if (fitted.refused.empty()) running.push_back(&fitted);

@@ -119,6 +119,9 @@ std::vector<CodeChanges> code_changes(const link::BoardTables& first,
   return list;
 }
 
+/// Rounded to `step`, and never a minus before nothing.
+double shown(double value, double step) { return std::round(value / step) * step + 0.0; }
+
 std::string box_text(const colour::ThresholdSet& set) {
   std::string out;
   for (const colour::HsvBox& b : set.boxes) {
@@ -143,8 +146,9 @@ Outcome compare_command(const Arguments& arguments, Progress& /*progress*/) {
   const ImagePoint a = first.curve->centre();
   const ImagePoint b = second.curve->centre();
   outcome.document = {{"centre_moved_px", {b.u_px - a.u_px, b.v_px - a.v_px}}};
-  outcome.summary =
-      fmt::format("Centre moved by ({:+.1f}, {:+.1f}) px\n", b.u_px - a.u_px, b.v_px - a.v_px);
+  outcome.summary = fmt::format("Centre moved by ({:+.1f}, {:+.1f}) px\n",
+                                shown(b.u_px - a.u_px, 0.1),
+                                shown(b.v_px - a.v_px, 0.1));
 
   nlohmann::ordered_json ranges = nlohmann::ordered_json::array();
   outcome.summary += "The same pixels, in the second:\n";
@@ -158,10 +162,10 @@ Outcome compare_command(const Arguments& arguments, Progress& /*progress*/) {
         "  {:.2f} m: {:+.3f} m on average, {:+.3f} m at worst (2 sd of both bands: {:.3f} m), "
         "bearing {:+.1f} deg\n",
         r.range_m,
-        r.mean_m,
-        r.worst_m,
+        shown(r.mean_m, 0.001),
+        shown(r.worst_m, 0.001),
         r.band_m,
-        r.bearing_rad * kDegPerRad);
+        shown(r.bearing_rad * kDegPerRad, 0.1));
   }
   if (ranges.empty()) outcome.summary += "  the two curves share no floor\n";
   outcome.document["ranges"] = std::move(ranges);

@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <map>
 #include <numeric>
 #include <system_error>
 #include <utility>
@@ -14,6 +15,7 @@
 #include "calib/colour/sets_file.h"
 #include "calib/range/curve_file.h"
 #include "calib/range/fit.h"
+#include "calib/verdict/assignment.h"
 #include "tools/rondel/range_input.h"
 #include "tools/rondel/results.h"
 #include "vision/detect/detect.h"
@@ -33,7 +35,47 @@ struct TapeMarks {
   int found = 0;
 };
 
-/// Looks for the objects of the tape sheet; the largest blob of a row's object is its mark.
+using Pairs = std::vector<std::pair<const TapeRow*, const vision::Blob*>>;
+
+/// Which blob is which row's, by least total distance from where `curve` expects the rows.
+Pairs pairs_of(const std::vector<const TapeRow*>& rows,
+               const std::vector<const vision::Blob*>& blobs,
+               const ObjectSpec& object,
+               const range::RangeCurve* curve) {
+  constexpr double kFarthestPx = 25.0;
+  Pairs pairs;
+  if (curve == nullptr) {
+    if (rows.size() == 1 && blobs.size() == 1) pairs.emplace_back(rows.front(), blobs.front());
+    return pairs;
+  }
+  std::vector<const TapeRow*> expected;
+  std::vector<ImagePoint> places;
+  for (const TapeRow* row : rows) {
+    if (!row->bearing_rad) continue;
+    const auto at = curve->pixel_of({row->range_m, *row->bearing_rad}, object.seen_height_m());
+    if (!at) continue;
+    expected.push_back(row);
+    places.push_back(*at);
+  }
+  if (expected.empty() || blobs.empty()) return pairs;
+  std::vector<double> cost;
+  for (const ImagePoint place : places) {
+    for (const vision::Blob* blob : blobs) {
+      cost.push_back(
+          std::hypot(blob->measured.u_px - place.u_px, blob->measured.v_px - place.v_px));
+    }
+  }
+  const std::vector<int> chosen =
+      verdict::assign(cost, static_cast<int>(expected.size()), static_cast<int>(blobs.size()));
+  for (std::size_t r = 0; r < expected.size(); ++r) {
+    if (chosen[r] < 0) continue;
+    const auto b = static_cast<std::size_t>(chosen[r]);
+    if (cost[r * blobs.size() + b] <= kFarthestPx) pairs.emplace_back(expected[r], blobs[b]);
+  }
+  return pairs;
+}
+
+/// Looks for the objects of the tape sheet in its images.
 TapeMarks marks_from_tape(const Workspace& workspace, Progress& progress) {
   const std::filesystem::path colours = workspace.results() / "colours.yaml";
   std::error_code error;
@@ -63,25 +105,44 @@ TapeMarks marks_from_tape(const Workspace& workspace, Progress& progress) {
                      ? bare.rim_centre->at
                      : ImagePoint{0.5 * (camera.width_px - 1), 0.5 * (camera.height_px - 1)};
 
+  // Several rows of an object in one image are told apart by where a first curve expects them; only
+  // without any curve a row has to be alone.
+  std::shared_ptr<const range::RangeCurve> first;
+  try {
+    first = range::fit_range(range_input(workspace, workspace.marks)).curve;
+  } catch (const InputError&) {
+    progress.note("no first curve from drawing or marks: only objects alone in their image count");
+  }
+
   TapeMarks result;
-  std::string loaded;
-  std::vector<vision::Blob> blobs;
-  int done = 0;
+  std::map<std::string, std::vector<const TapeRow*>> by_image;
   for (const TapeRow& row : workspace.tape) {
-    progress.at("tape rows", done++, static_cast<int>(workspace.tape.size()));
     if (row.absent) continue;
+    by_image[row.image].push_back(&row);
     ++result.rows;
-    if (row.image != loaded) {
-      blobs = vision::detect(setup, vision::load_image(workspace.folder / row.image, camera));
-      loaded = row.image;
+  }
+  int done = 0;
+  for (const auto& [image, rows] : by_image) {
+    progress.at("images", done++, static_cast<int>(by_image.size()));
+    const std::vector<vision::Blob> blobs =
+        vision::detect(setup, vision::load_image(workspace.folder / image, camera));
+    for (std::size_t o = 0; o < workspace.venue.objects.size(); ++o) {
+      const ObjectSpec& object = workspace.venue.objects[o];
+      std::vector<const TapeRow*> mine;
+      for (const TapeRow* row : rows) {
+        if (row->object == object.name) mine.push_back(row);
+      }
+      std::vector<const vision::Blob*> seen;
+      for (const vision::Blob& blob : blobs) {
+        if (blob.object == static_cast<int>(o)) seen.push_back(&blob);
+      }
+      for (const auto& [row, blob] : pairs_of(mine, seen, object, first.get())) {
+        if (blob->cut_by_mask) continue;
+        ++result.found;
+        Mark mark{row->line, image, blob->measured, object.name, row->range_m, row->bearing_rad};
+        (result.found % 2 == 1 ? result.marks : result.held_out).push_back(std::move(mark));
+      }
     }
-    const auto blob = std::find_if(blobs.begin(), blobs.end(), [&](const vision::Blob& b) {
-      return workspace.venue.objects[static_cast<std::size_t>(b.object)].name == row.object;
-    });
-    if (blob == blobs.end() || blob->cut_by_mask) continue;
-    ++result.found;
-    Mark mark{row.line, row.image, blob->measured, row.object, row.range_m, row.bearing_rad};
-    (result.found % 2 == 1 ? result.marks : result.held_out).push_back(std::move(mark));
   }
   if (result.marks.empty()) {
     throw InputError("tape.csv",
