@@ -101,7 +101,7 @@ static inline @p@_codes @p@_encode_@i@(int16_t u_sub, int16_t v_sub) {
                       identifier(tables.prefix),
                       layout.edge_shift);
   bool slow = false;
-  for (const auto& c : layout.harmonic) slow = slow || c[1] != 0;
+  for (std::size_t i = harmonic ? 0 : 2; i < 4; ++i) slow = slow || layout.harmonic[i][1] != 0;
   if (slow) {
     const int by = tables.slow_shift - layout.edge_shift;
     values.emplace_back("by", std::to_string(by));
