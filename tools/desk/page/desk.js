@@ -86,7 +86,8 @@ async function picture(address) {
 
 export async function showFrame(image) {
   desk.image = image;
-  desk.picture = image ? await picture('/api/frame?' + new URLSearchParams({ image })) : null;
+  const frame = desk.bench.frames.find((one) => one.image === image);
+  desk.picture = image && frame && !frame.problem ? await picture('/api/frame?' + new URLSearchParams({ image })) : null;
   await showClasses();
   const choice = $('frame-choice');
   if (choice.value !== image) choice.value = image;
@@ -97,7 +98,7 @@ export async function showFrame(image) {
 }
 
 export async function showClasses() {
-  desk.classPicture = desk.layers.classes && desk.image
+  desk.classPicture = desk.layers.classes && desk.picture && desk.bench.colours
     ? await picture('/api/classes?' + new URLSearchParams({ image: desk.image })) : null;
   if (ringView) redraw();
 }
@@ -229,6 +230,7 @@ function makeViews() {
     onDrag: (handle, a, b) => handle.move(b, -a),
     onDrop: (handle, a, b) => handle.drop(b, -a),
   });
+  window.deskViews = { ring: ringView, plan: planView };
 }
 
 function showLayers() {
@@ -255,9 +257,25 @@ function showFrames() {
 export function showTray() {
   const station = here();
   const tray = $('tray');
-  const focus = document.activeElement && tray.contains(document.activeElement) ? document.activeElement.id : '';
+  const focus = document.activeElement && tray.contains(document.activeElement) ? document.activeElement : null;
+  // What is half typed stays when the tray is made anew under it.
+  const typed = [...tray.querySelectorAll('input[data-typed]')].map((input) => [input.id, input.dataset.about, input.value]);
+  const scrolled = tray.scrollTop;
   tray.replaceChildren(make('h2', {}, station.title), ...station.tray(desk.bench).filter(Boolean));
-  if (focus && document.getElementById(focus)) document.getElementById(focus).focus();
+  for (const [id, about, value] of typed) {
+    const input = id && document.getElementById(id);
+    if (!input || input.dataset.about !== about) continue;
+    input.value = value;
+    input.dataset.typed = 'yes';
+  }
+  tray.scrollTop = scrolled;
+  if (focus && focus.id && document.getElementById(focus.id)) {
+    const again = document.getElementById(focus.id);
+    again.focus();
+    if (focus.selectionStart !== null && focus.selectionStart !== undefined && again.setSelectionRange && again.type === 'text') {
+      again.setSelectionRange(focus.selectionStart, focus.selectionEnd);
+    }
+  }
   $('ring-help').textContent = station.ringHelp || '';
   $('plan-help').textContent = station.planHelp || '';
 }
@@ -289,12 +307,20 @@ function listen() {
     const ended = data(event);
     desk.progress = null;
     if (ended.problems) say(ended.problems.join('\n'));
+    else if (ended.result?.batch) say(ended.result.summary);
     if (ended.fault) say('A fault of Rondel’s own: ' + ended.fault);
     if (ended.cancelled) say(`${ended.what}: stopped`);
     load();
   });
-  events.addEventListener('changed', () => load());
-  events.onerror = () => { $('next').dataset.lost = 'yes'; };
+  events.addEventListener('changed', (event) => { if (data(event).stamp !== desk.bench.stamp) load(); });
+  events.onerror = () => {
+    if ($('next').dataset.lost) return;
+    $('next').dataset.lost = 'yes';
+    setTimeout(() => {
+      if ($('next').dataset.lost) $('next').replaceChildren(make('span', { class: 'what s-refused' },
+        'The desk’s program does not answer. All that was done is on disk; start it again with: rondel desk'));
+    }, 8000);
+  };
   events.onopen = () => {
     if ($('next').dataset.lost) load();
     delete $('next').dataset.lost;
@@ -305,6 +331,9 @@ async function start() {
   desk.bench = await get('/api/bench');
   makeViews();
   $('frame-choice').addEventListener('change', (event) => showFrame(event.target.value));
+  $('tray').addEventListener('input', (event) => {
+    if (event.target.tagName === 'INPUT' && event.target.type === 'text') event.target.dataset.typed = 'yes';
+  });
   const step = (way) => attempt(async () => {
     await post('/api/' + way);
     await load();
@@ -320,6 +349,7 @@ async function start() {
   });
   matchMedia('(prefers-color-scheme: dark)').addEventListener('change', () => { redraw(); showTray(); });
   desk.station = desk.bench.next.station || 'frames';
+  if (desk.bench.running) desk.progress = { what: desk.bench.running };
   await load();
   listen();
 }

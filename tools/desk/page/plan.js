@@ -11,7 +11,7 @@ const own = (range, bearingDeg) => {
   return [-range * Math.sin(angle), range * Math.cos(angle)];
 };
 
-function rings(context, view, bench) {
+function rings(context, view, reachM) {
   const [cx, cy] = view.toScreen(0, 0);
   const reach = Math.hypot(view.canvas.clientWidth, view.canvas.clientHeight) / view.scale;
   const step = [0.1, 0.25, 0.5, 1, 2, 5].find((size) => size * view.scale > 46) || 10;
@@ -33,24 +33,24 @@ function rings(context, view, bench) {
     context.lineTo(x, y);
     context.stroke();
   }
-  if (bench.reach_m) {
+  if (reachM) {
     context.setLineDash([6, 4]);
     context.strokeStyle = ink('wait');
     context.beginPath();
-    context.arc(cx, cy, bench.reach_m * view.scale, 0, 2 * Math.PI);
+    context.arc(cx, cy, reachM * view.scale, 0, 2 * Math.PI);
     context.stroke();
     context.setLineDash([]);
     context.fillStyle = ink('wait');
-    context.fillText('reach', cx - 34, cy - bench.reach_m * view.scale - 3);
+    context.fillText('reach', cx - 36, cy - reachM * view.scale - 3);
   }
 }
 
 function blind(context, view, zones) {
   if (!zones || !zones.length) return;
-  const half = 180 / zones.length;
   context.fillStyle = ink('hidden');
   for (const zone of zones) {
     if (!(zone.to_m > zone.from_m)) continue;
+    const half = zone.width_deg / 2 + 0.15;
     context.beginPath();
     const steps = [-half, -half / 2, 0, half / 2, half];
     for (const d of steps) context.lineTo(...view.toScreen(...own(zone.to_m, zone.bearing_deg + d)));
@@ -78,14 +78,14 @@ function robot(context, view, radius) {
 
 export function drawPlan(context, view, desk) {
   const { bench } = desk;
-  rings(context, view, bench);
+  rings(context, view, desk.preview?.reach_m ?? bench.reach_m);
   blind(context, view, bench.blind_zone);
   robot(context, view, bench.rig.robot_radius_m);
   const places = desk.preview?.marks || bench.mark_places || [];
   for (const mark of bench.marks) {
     const bearing = mark.bearing_deg;
     const fitted = places.find((place) => place.line === mark.line);
-    const flagged = bench.flagged.includes(mark.line);
+    const flagged = (desk.preview?.flagged || bench.flagged).includes(mark.line);
     context.strokeStyle = flagged ? ink('bad') : ink('accent');
     context.lineWidth = desk.picked?.line === mark.line ? 3 : 1.5;
     const moved = desk.movedFloor?.line === mark.line ? desk.movedFloor : mark;
@@ -110,7 +110,7 @@ export function drawPlan(context, view, desk) {
     context.arc(x, y, 5, 0, 2 * Math.PI);
     context.stroke();
   }
-  if (desk.errors) {
+  if (desk.station === 'check' && desk.errors) {
     for (const row of desk.errors) {
       if (row.tape_range_m === undefined || row.range_m === undefined) continue;
       const [x, y] = view.toScreen(...own(row.tape_range_m, row.tape_bearing_deg ?? row.bearing_deg));
@@ -126,7 +126,7 @@ export function drawPlan(context, view, desk) {
       context.stroke();
     }
   }
-  if (desk.advice) {
+  if (desk.station === 'marks' && desk.advice) {
     context.strokeStyle = ink('wait');
     context.fillStyle = ink('wait');
     context.lineWidth = 2;

@@ -42,7 +42,8 @@ export function drawRing(context, view, desk) {
     context.fillStyle = ink('soft');
     context.font = `1rem ${getComputedStyle(document.body).fontFamily}`;
     context.textAlign = 'center';
-    context.fillText(bench.frames.length ? 'Choose a frame' : 'No frames yet: add some in the tray',
+    const bad = bench.frames.find((frame) => frame.image === desk.image)?.problem;
+    context.fillText(bad ? `This frame ${bad}` : bench.frames.length ? 'Choose a frame' : 'No frames yet: add some in the tray',
       view.canvas.clientWidth / 2, view.canvas.clientHeight / 2);
     context.textAlign = 'start';
   }
@@ -88,7 +89,7 @@ export function drawRing(context, view, desk) {
     for (const mark of marks) {
       const other = mark.image && mark.image !== desk.image;
       const [x, y] = view.toScreen(mark.u_px, mark.v_px);
-      const flagged = bench.flagged.includes(mark.line);
+      const flagged = (desk.preview?.flagged || bench.flagged).includes(mark.line);
       context.beginPath();
       context.arc(x, y, desk.picked?.line === mark.line ? 8 : 5, 0, 2 * Math.PI);
       context.globalAlpha = other ? 0.55 : 1;
@@ -96,13 +97,21 @@ export function drawRing(context, view, desk) {
       context.globalAlpha = 1;
     }
   }
-  if (desk.advice) {
+  if (desk.station === 'marks' && desk.advice) {
     for (const spot of desk.advice) {
       if (spot.u_px === undefined) continue;
       const [x, y] = view.toScreen(spot.u_px, spot.v_px);
       context.beginPath();
       context.rect(x - 6, y - 6, 12, 12);
       outline(ink('wait'));
+    }
+  }
+  if (desk.station === 'check' && desk.errors) {
+    for (const row of desk.errors) {
+      if (row.image !== desk.image || row.u_px === undefined) continue;
+      context.beginPath();
+      context.arc(...view.toScreen(row.u_px, row.v_px), 8, 0, 2 * Math.PI);
+      outline(ink(row.within === false ? 'bad' : 'good'));
     }
   }
   if (desk.pointed && desk.pointed.u_px !== undefined) {

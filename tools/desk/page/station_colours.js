@@ -1,6 +1,6 @@
 // Colours: swatches painted on frames, the sets found, and what moving an edge costs.
 import { desk, edit, attempt, load, redraw, run, showClasses, showFrame, showTray } from './desk.js';
-import { post, newestOnly } from './server.js';
+import { get, post, newestOnly } from './server.js';
 import { make, field, sheet, percent } from './html.js';
 import { ink } from './view.js';
 
@@ -10,6 +10,7 @@ let corners = [];
 let shown = '';       // object whose planes are drawn
 let trial = null;     // boxes being dragged: {object, boxes}
 let trialAnswer = null;
+const densities = {};  // object -> {stamp, planes}
 
 const header = ['image', 'label', 'shape', 'points'];
 const text = (...n) => n.map((x) => String(+x.toFixed(1))).join(' ');
@@ -23,8 +24,20 @@ const ask = newestOnly((boxes) => post('/api/preview/colours', boxes), (answer) 
   showTray();
 });
 
+// How common each colour is, fetched once for as long as swatches and mask stay the same.
+function densitiesOf(bench, object) {
+  const stamp = `${bench.files['swatches.csv']?.sha} ${bench.mask_stamp}`;
+  if (densities[object]?.stamp === stamp) return densities[object].planes;
+  densities[object] = { stamp, planes: null };
+  get('/api/densities', { object }).then((planes) => {
+    densities[object].planes = planes;
+    if (desk.station === 'colours') showTray();
+  }).catch(() => {});
+  return null;
+}
+
 // The two planes of a set: hue-saturation and saturation-value, densities below, boxes above.
-function plane(object, name, xKey, yKey, xMax, yMax, densities, boxes) {
+function plane(object, name, xKey, yKey, xMax, yMax, counts, boxes) {
   const canvas = make('canvas', { width: 260, height: 170, style: 'width:100%;touch-action:none', tabindex: '0', role: 'application',
     'aria-label': `${name} plane of ${object}; drag an edge of a box` });
   const context = canvas.getContext('2d');
@@ -34,7 +47,7 @@ function plane(object, name, xKey, yKey, xMax, yMax, densities, boxes) {
     context.fillStyle = ink('floor');
     context.fillRect(0, 0, canvas.width, canvas.height);
     for (const [key, colour] of [['surroundings', ink('soft')], ['object', ink('wait')]]) {
-      const grid = densities?.[key];
+      const grid = counts?.[key];
       if (!grid) continue;
       context.fillStyle = colour;
       grid.forEach((row, j) => row.forEach((value, i) => {
@@ -133,6 +146,7 @@ export const colours = {
     const mine = bench.swatches.filter((swatch) => swatch.image === desk.image);
     const set = sets.find(([name]) => name === shown);
     const boxes = trial && trial.object === shown ? trial.boxes : set ? structuredClone(set[1].boxes) : [];
+    const planes = set ? densitiesOf(bench, shown) : null;
     const lights = [...new Set(bench.frames.map((frame) => frame.light))];
     return [
       make('div', { class: 'row' },
@@ -149,8 +163,8 @@ export const colours = {
       sets.length ? sheet(['Object', 'Worst light', 'Recall', 'False', ''], sets.map(([name, one]) => [
         name, one.worst_light || '–', percent(one.score), one.false_positive_rate?.toExponential(1) ?? '–',
         make('button', { type: 'button', 'aria-pressed': String(shown === name), onclick: () => { shown = name; trial = null; trialAnswer = null; showTray(); } }, 'planes')]), [2, 3]) : null,
-      set ? plane(shown, 'Hue (across) and saturation (up)', 'h', 's', 179, 255, bench.densities?.[shown]?.hs, boxes) : null,
-      set ? plane(shown, 'Saturation (across) and value (up)', 's', 'v', 255, 255, bench.densities?.[shown]?.sv, boxes) : null,
+      set ? plane(shown, 'Hue (across) and saturation (up)', 'h', 's', 179, 255, planes?.hs, boxes) : null,
+      set ? plane(shown, 'Saturation (across) and value (up)', 's', 'v', 255, 255, planes?.sv, boxes) : null,
       trialAnswer ? make('div', {}, make('h3', {}, 'With the edges as dragged'),
         sheet(['Light', 'Recall', 'False'], trialAnswer.lights.map((one) => [one.light || 'unnamed', percent(one.recall), one.false_positive_rate.toExponential(1)]), [1, 2]),
         make('button', { type: 'button', onclick: () => { trial = null; trialAnswer = null; showTray(); } }, 'Back to the set found')) : null,

@@ -23,6 +23,9 @@ function dropPlace() {
     accept: '.png,.jpg,.jpeg,.bmp,.ppm,.565,.rgb565', onchange: (event) => bring(event.target.files),
   });
   const place = make('div', { class: 'drop' }, make('p', {}, 'Drop images here, or '), chooser);
+  const folder = make('input', { type: 'file', webkitdirectory: true, id: 'frame-folder', 'aria-label': 'Choose a folder of images',
+    onchange: (event) => bring([...event.target.files].filter((file) => /\.(png|jpe?g|bmp|ppm|pgm|565|rgb565)$/i.test(file.name))) });
+  place.append(make('p', {}, 'or a whole folder: '), folder);
   place.addEventListener('dragover', (event) => { event.preventDefault(); place.classList.add('over'); });
   place.addEventListener('dragleave', () => place.classList.remove('over'));
   place.addEventListener('drop', (event) => {
@@ -98,13 +101,14 @@ export const frames = {
         oninput: (event) => { light = event.target.value.trim(); },
       })), make('datalist', { id: 'lights' }, ...lights.map((name) => make('option', { value: name })))),
       dropPlace(),
+      make('p', { class: 'care' }, 'Wheels off the floor, or motor and kicker power cut, while frames are taken. No sun into the mirror; lamps and LED rings dazzle.'),
       make('div', { class: 'row' }, button, make('button', { type: 'button', onclick: () => keep(video) }, 'Keep this picture')),
       video,
       ...lights.flatMap((name) => [
         make('h3', {}, name || 'no light named'),
         make('div', { class: 'shots' }, ...bench.frames.filter((frame) => frame.light === name).map((frame) =>
           make('div', {}, make('button', { type: 'button', onclick: () => showFrame(frame.image), 'aria-label': `Show ${frame.image}` },
-            make('img', { src: '/api/frame?' + new URLSearchParams({ image: frame.image }), alt: '', loading: 'lazy' }),
+            frame.problem ? null : make('img', { src: '/api/frame?' + new URLSearchParams({ image: frame.image }), alt: '', loading: 'lazy' }),
             frame.image.split('/').pop()),
             frame.problem ? make('p', { class: 's-refused' }, frame.problem) : null))),
       ]),

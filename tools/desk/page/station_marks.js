@@ -6,6 +6,7 @@ import { ink } from './view.js';
 
 let object = '';
 let pending = null;  // {u_px, v_px}: clicked, waiting for its range
+let asked = null;    // the pending mark whose form has had the focus
 let chart = null;
 export const timings = [];  // ms from a move to its curve on screen
 
@@ -28,8 +29,10 @@ const preview = newestOnly((marks) => post('/api/preview/range', { marks }), (an
     desk.preview = answer;
   }
   drawChart();
+  document.getElementById('curve-facts')?.replaceChildren(curveFacts());
   redraw();
-  if (marks.started) timings.push(performance.now() - marks.started);
+  // After the frame in which the views are painted.
+  if (marks.started) requestAnimationFrame(() => timings.push(performance.now() - marks.started));
 });
 
 function marksWith(moved) {
@@ -44,6 +47,14 @@ function near(mark, u, v, within) {
 
 function curve() {
   return desk.preview && !desk.preview.problem ? desk.preview : desk.bench.curve;
+}
+
+function curveFacts() {
+  const data = curve();
+  if (desk.preview?.problem) return make('p', { class: 's-refused' }, desk.preview.problem);
+  if (!data) return '';
+  return facts([['Model', data.model], ['Misfit', `${data.rms_px?.toFixed(2) ?? '–'} px RMS`],
+    ['Leave-one-out', percent(data.leave_one_out_relative)], ['Reach', metres(data.reach_m)]]);
 }
 
 function drawChart() {
@@ -83,8 +94,9 @@ async function snap(u, v) {
 }
 
 function addForm() {
-  const range = make('input', { id: 'mark-range', inputmode: 'decimal', placeholder: 'm', autocomplete: 'off' });
-  const bearing = make('input', { id: 'mark-bearing', inputmode: 'decimal', placeholder: 'deg, or empty', autocomplete: 'off' });
+  const about = `${pending.u_px} ${pending.v_px}`;
+  const range = make('input', { id: 'mark-range', 'data-about': about, inputmode: 'decimal', placeholder: 'm', autocomplete: 'off' });
+  const bearing = make('input', { id: 'mark-bearing', 'data-about': about, inputmode: 'decimal', placeholder: 'deg, or empty', autocomplete: 'off' });
   const add = async () => {
     const mark = { ...pending, image: desk.image, object, range_m: Number(range.value.replace(',', '.')),
       bearing_deg: bearing.value.trim() === '' ? null : Number(bearing.value.replace(',', '.')) };
@@ -101,13 +113,16 @@ function addForm() {
     make('div', { class: 'row' }, field('Range from the axis, m', range), field('Bearing, degrees', bearing),
       make('button', { class: 'main', type: 'submit', id: 'mark-add' }, 'Add mark')),
     make('p', {}, `at pixel ${pending.u_px.toFixed(1)}, ${pending.v_px.toFixed(1)}${object ? ` (${object})` : ' (floor)'}`));
-  setTimeout(() => range.focus(), 0);
+  if (asked !== pending) {
+    asked = pending;
+    setTimeout(() => range.focus(), 0);
+  }
   return form;
 }
 
 function changeForm(mark) {
-  const range = make('input', { id: 'picked-range', inputmode: 'decimal', value: mark.range_m });
-  const bearing = make('input', { id: 'picked-bearing', inputmode: 'decimal', value: mark.bearing_deg ?? '' });
+  const range = make('input', { id: 'picked-range', 'data-about': mark.text, inputmode: 'decimal', value: mark.range_m });
+  const bearing = make('input', { id: 'picked-bearing', 'data-about': mark.text, inputmode: 'decimal', value: mark.bearing_deg ?? '' });
   const apply = () => change({ ...mark, range_m: Number(range.value.replace(',', '.')),
     bearing_deg: bearing.value.trim() === '' ? null : Number(bearing.value.replace(',', '.')) });
   return make('form', { onsubmit: (event) => { event.preventDefault(); apply(); } },
@@ -181,7 +196,9 @@ export const marks = {
       }, make('option', { value: '', selected: object === '' }, 'the floor'),
         ...bench.objects.map((one) => make('option', { value: one.name, selected: object === one.name }, one.name)))),
         make('button', { type: 'button', onclick: () => attempt(async () => {
-          desk.advice = (await get('/api/advise')).spots;
+          const advice = await get('/api/advise');
+          desk.advice = advice.spots;
+          desk.adviceWhy = `${advice.enough ? 'You can stop' : 'Go on'}: ${advice.why}`;
           showTray();
           redraw();
         }) }, 'Where to measure next'),
@@ -189,12 +206,10 @@ export const marks = {
       pending ? addForm() : null,
       picked ? changeForm(picked) : null,
       desk.advice && desk.advice.length ? make('p', {}, make('strong', {}, 'Measure next: '),
-        `${metres(desk.advice[0].range_m)} at ${degrees(desk.advice[0].bearing_deg, 0)}. ${desk.advice[0].text || ''}`) : null,
+        `${metres(desk.advice[0].range_m)} at ${degrees(desk.advice[0].bearing_deg, 0)}. ${desk.advice[0].text || ''} ${desk.adviceWhy || ''}`) : null,
       step.problem ? make('ul', { class: 'problems' }, ...step.problem.split('\n').map((line) => make('li', {}, line))) : null,
-      desk.preview?.problem ? make('p', { class: 's-refused' }, desk.preview.problem) : null,
       data ? make('div', { class: 'plot' }, make('canvas', { id: 'curve', role: 'img', 'aria-label': 'Range against radius, with band and marks' })) : null,
-      data ? facts([['Model', data.model], ['Misfit', `${data.rms_px?.toFixed(2) ?? '–'} px RMS`],
-        ['Leave-one-out', percent(data.leave_one_out_relative)], ['Reach', metres(data.reach_m)]]) : null,
+      make('div', { id: 'curve-facts' }, curveFacts()),
       bench.marks.length ? sheet(['Mark', 'Range, m', 'Bearing, °', 'u, v px', ''], bench.marks.map((mark) => [
         mark.object || 'floor', mark.range_m.toFixed(3), mark.bearing_deg?.toFixed(1) ?? '–',
         `${mark.u_px.toFixed(1)}, ${mark.v_px.toFixed(1)}`,
