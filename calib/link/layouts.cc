@@ -62,7 +62,7 @@ void set_edges(const Bench& bench, const Picture& picture, bool wide, RangeLayou
   const int codes = bench.book->size();
   const double never = std::numeric_limits<double>::infinity();
   std::vector<std::vector<double>> by_sector(zu(layout.sectors));
-  for (std::size_t k = 1; k < picture.knots_m.size(); ++k) {
+  for (std::size_t k = 0; k < picture.knots_m.size(); ++k) {
     // Of each sector: what is visible, else what is hidden; else of the whole curve.
     const std::size_t all = by_sector.size();
     std::vector<std::array<Middle, 2>> middles(all + 1);
@@ -109,16 +109,17 @@ void set_edges(const Bench& bench, const Picture& picture, bool wide, RangeLayou
     for (int k = 1; k <= codes; ++k) {
       double q = 0.0;
       if (codes <= kMostKnots) {
-        q = q_of_knot[zu(k) - 1];
+        q = q_of_knot[zu(k)];
       } else {
         const double range_m = bench.book->edges_m[zu(k)];
         const auto above =
             std::lower_bound(picture.knots_m.begin() + 1, picture.knots_m.end() - 1, range_m);
         const auto i = static_cast<std::size_t>(above - picture.knots_m.begin());
-        const double q0 = i >= 2 ? q_of_knot[i - 2] : q_of_knot[0];
         const double part =
             (range_m - picture.knots_m[i - 1]) / (picture.knots_m[i] - picture.knots_m[i - 1]);
-        q = i >= 2 ? q0 + part * (q_of_knot[i - 1] - q0) : q_of_knot[0];
+        q = std::isfinite(q_of_knot[i])
+                ? q_of_knot[i - 1] + part * (q_of_knot[i] - q_of_knot[i - 1])
+                : never;
       }
       const double steps = std::ldexp(q, -layout.edge_shift);
       const double limit = wide ? 4294967295.0 : 65535.0;

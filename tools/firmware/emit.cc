@@ -36,6 +36,7 @@ std::vector<Artefact> all_artefacts(const link::BoardTables& tables) {
           {prefix + "_drive.h", "C99, drive board, also AVR", drive_header(tables)},
           {prefix + ".py", "MicroPython, both boards", micropython_module(tables)},
           {prefix + ".bin", "packed binary, for 'rondel send'", {packed.begin(), packed.end()}},
+          {prefix + "_receiver.h", "C99, takes new tables over the line", receiver_header(prefix)},
           {prefix + "_ranges.csv", "range codes", range_csv(tables)},
           {prefix + "_bearings.csv", "bearing codes", bearing_csv(tables)}};
 }

@@ -24,6 +24,9 @@ struct Artefact {
 /// Both directions for MicroPython; runs under Python 3 as well.
 [[nodiscard]] std::string micropython_module(const link::BoardTables& tables);
 
+/// C99 to build into firmware that takes new tables over its serial line ('rondel send').
+[[nodiscard]] std::string receiver_header(const std::string& prefix);
+
 /// The codes and what they stand for: range_code,from_m,to_m,range_m and bearing_code,bearing_deg.
 [[nodiscard]] std::string range_csv(const link::BoardTables& tables);
 [[nodiscard]] std::string bearing_csv(const link::BoardTables& tables);

@@ -60,6 +60,7 @@ Outcome at_command(const Arguments& arguments, Progress& progress);
 Outcome where_command(const Arguments& arguments, Progress& progress);
 Outcome locate_command(const Arguments& arguments, Progress& progress);
 Outcome compare_command(const Arguments& arguments, Progress& progress);
+Outcome send_command(const Arguments& arguments, Progress& progress);
 Outcome scene_command(const Arguments& arguments, Progress& progress);
 Outcome completion_command(const Arguments& arguments, Progress& progress);
 

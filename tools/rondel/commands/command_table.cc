@@ -52,6 +52,10 @@ constexpr std::array kPlaceFlags = {
     Flag{"--points", "FILE", "Read points from a CSV file, or from standard input with '-'."},
 };
 
+constexpr std::array kSendFlags = {
+    Flag{"--baud", "RATE", "The port's rate, baud; without it the venue's link.baud."},
+};
+
 constexpr std::array kSceneFlags = {
     Flag{"--threads", "COUNT", "Threads to render with; all of the machine's when not given."},
 };
@@ -112,6 +116,11 @@ constexpr std::array kCommands = {
             "Say what changed between two venues or two results, in metres and in codes.",
             kNoFlags,
             compare_command},
+    Command{"send",
+            "VENUE PORT",
+            "Load the tables onto a board over a serial port.",
+            kSendFlags,
+            send_command},
     Command{"scene",
             "SCENE OUT",
             "Render frames with known truth from a scene description.",
