@@ -674,17 +674,13 @@ FitResult fit_range(const FitInput& input) {
 
   const Fitted* chosen = choose(all);
   if (chosen == nullptr) {
-    std::vector<Problem> problems;
-    for (const Fitted& fitted : all) {
-      problems.push_back(
-          {"marks.csv", fmt::format("{}: {}", full_name(*fitted.row), fitted.refused)});
+    if (all.empty()) {
+      throw InputError("--model",
+                       fmt::format("'{}' needs a drawing in rig.yaml", input.only_model));
     }
-    if (problems.empty()) {
-      problems.push_back(
-          {"--model", fmt::format("'{}' needs a drawing in rig.yaml", input.only_model)});
-    }
-    // One line is enough where all fail alike.
-    throw InputError({problems.front()});
+    // All fail for want of marks, or alike: the first says it.
+    throw InputError("marks.csv",
+                     fmt::format("{}: {}", full_name(*all.front().row), all.front().refused));
   }
 
   for (const Fitted& fitted : all) {
