@@ -88,13 +88,12 @@ Moments moments_of(const std::vector<double>& x, const std::function<double(doub
 }
 
 /// The centre of mass of `weight` between two places.
-double mean_of(double low, double high, const std::function<double(double)>& weight) {
-  constexpr int kParts = 16;
+double mean_of(double low, double high, int parts, const std::function<double(double)>& weight) {
   double s0 = 0.0;
   double s1 = 0.0;
-  for (int i = 0; i <= kParts; ++i) {
-    const double at = low + (high - low) * i / kParts;
-    const double w = weight(at) * (i == 0 || i == kParts ? 1.0 : (i % 2 == 1 ? 4.0 : 2.0));
+  for (int i = 0; i <= parts; ++i) {
+    const double at = low + (high - low) * i / parts;
+    const double w = weight(at) * (i == 0 || i == parts ? 1.0 : (i % 2 == 1 ? 4.0 : 2.0));
     s0 += w;
     s1 += w * at;
   }
@@ -206,11 +205,12 @@ Codebook mean_square_codebook(double low,
   book.codes_m.resize(static_cast<std::size_t>(codes));
   // Lloyd's two conditions in turn, until nothing moves.
   const int most_rounds = std::max(50, 2000000 / (16 * codes));
+  const int parts = 2 * std::clamp(1024 / codes, 8, 256);  // few cells are wide ones
   double moved = high - low;
   for (int round = 0; round < most_rounds && moved > 1e-9 * (high - low); ++round) {
     moved = 0.0;
     for (std::size_t k = 0; k < book.codes_m.size(); ++k) {
-      book.codes_m[k] = mean_of(book.edges_m[k], book.edges_m[k + 1], weight);
+      book.codes_m[k] = mean_of(book.edges_m[k], book.edges_m[k + 1], parts, weight);
     }
     for (std::size_t k = 1; k < book.codes_m.size(); ++k) {
       const double edge = 0.5 * (book.codes_m[k - 1] + book.codes_m[k]);
