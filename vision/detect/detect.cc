@@ -350,14 +350,17 @@ ImagePoint pure_centroid(const cv::Mat& bgr,
   }
   own *= 1.0F / count;
 
-  const auto touches_blob = [&](int u, int v) {
-    for (int dv = -1; dv <= 1; ++dv) {
-      for (int du = -1; du <= 1; ++du) {
-        if (state[at(u + du, v + dv)] != 0) return true;
+  // Pixels of the blob and all their neighbours.
+  std::vector<std::uint8_t> beside(state.size(), 0);
+  for (int v = box.y; v < box.y + box.height; ++v) {
+    for (int u = box.x; u < box.x + box.width; ++u) {
+      const std::size_t k = at(u, v);
+      if (state[k] == 0) continue;
+      for (const std::size_t row : {k - width, k, k + width}) {
+        beside[row - 1] = beside[row] = beside[row + 1] = 1;
       }
     }
-    return false;
-  };
+  }
   // The background near (u, v): pixels that are neither the blob nor next to it.
   const auto background = [&](int u, int v) -> std::optional<cv::Vec3f> {
     cv::Vec3f sum;
@@ -366,7 +369,7 @@ ImagePoint pure_centroid(const cv::Mat& bgr,
          ++y) {
       for (int x = std::max(around.x, u - 2); x <= std::min(around.x + around.width - 1, u + 2);
            ++x) {
-        if (mask.at<std::uint8_t>(y, x) == 0 || touches_blob(x, y)) continue;
+        if (mask.at<std::uint8_t>(y, x) == 0 || beside[at(x, y)] != 0) continue;
         sum += linear(bgr.at<cv::Vec3b>(y, x));
         n += 1.0F;
       }
@@ -396,7 +399,7 @@ ImagePoint pure_centroid(const cv::Mat& bgr,
          u < std::min(around.x + around.width, box.x + box.width + 1);
          ++u) {
       const std::uint8_t here = state[at(u, v)];
-      if (here == 0 && (mask.at<std::uint8_t>(v, u) == 0 || !touches_blob(u, v))) continue;
+      if (here == 0 && (mask.at<std::uint8_t>(v, u) == 0 || beside[at(u, v)] == 0)) continue;
       const auto weight =
           static_cast<double>(here == 2 ? 1.0F : purity(u, v, here == 0 ? 0.0F : 1.0F));
       sum += weight;
