@@ -34,7 +34,7 @@ std::filesystem::path write_beside(const std::filesystem::path& path, std::strin
   if (path.has_parent_path()) fs::create_directories(path.parent_path());
   std::string name(1, '.');
   name.append(path.filename().string()).append(".part").append(std::to_string(::getpid()));
-  const fs::path beside = path.parent_path() / name;
+  fs::path beside = path.parent_path() / name;
   std::ofstream out(beside, std::ios::binary | std::ios::trunc);
   out.write(bytes.data(), static_cast<std::streamsize>(bytes.size()));
   out.flush();

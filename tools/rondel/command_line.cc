@@ -33,6 +33,12 @@ class Complaints {
   std::vector<Problem> problems_;
 };
 
+std::string needs_a_value(const Flag& flag) {
+  std::string text(flag.name);
+  text.append(" needs a value: ").append(flag.name).append(" ").append(flag.value);
+  return text;
+}
+
 struct Binding {
   const Flag* flag = nullptr;
   CLI::Option* option = nullptr;
@@ -160,9 +166,7 @@ Arguments parse(const Command& command, const std::vector<std::string>& line) {
         if (binding.flag->name == *(marker - 1)) last = binding.flag;
       }
     }
-    complaints.add(last != nullptr ? std::string(last->name) + " needs a value: " +
-                                         std::string(last->name) + " " + std::string(last->value)
-                                   : "the flags cannot be read");
+    complaints.add(last != nullptr ? needs_a_value(*last) : "the flags cannot be read");
   } catch (const CLI::ParseError& error) {
     complaints.add(error.what());
   }
@@ -188,12 +192,13 @@ Arguments parse(const Command& command, const std::vector<std::string>& line) {
     if (binding.values.size() > 1) complaints.add(name + " is given twice; once is enough");
     const std::string value = binding.values.empty() ? "" : binding.values.front();
     if (value.empty() || (looks_like_flag(value) && value.substr(0, 2) == "--")) {
-      complaints.add(name + " needs a value: " + name + " " + std::string(binding.flag->value));
+      complaints.add(needs_a_value(*binding.flag));
     }
     const std::vector<std::string> choices = choices_of(binding.flag->value);
     if (!choices.empty() && std::find(choices.begin(), choices.end(), value) == choices.end()) {
-      complaints.add(name + ": '" + quotable(value) + "' is none of its words" +
-                     hint_for(value, choices));
+      std::string text = name;
+      text.append(": '").append(quotable(value)).append("' is none of its words");
+      complaints.add(text.append(hint_for(value, choices)));
     }
     arguments.flags[name] = value;
   }
