@@ -132,6 +132,7 @@ MadeFrom inputs_of(const Workspace& workspace, std::string_view step) {
     inputs.part("rig.yaml: camera", canonical_camera(rig))
         .part("venue.yaml: objects", canonical_objects(venue))
         .part("venue.yaml: lighting", canonical_lighting(venue))
+        .part("venue.yaml: tolerance", canonical_tolerance(venue))
         .frames(workspace.frames)
         .sheet("swatches.csv")
         .result("mask.png");

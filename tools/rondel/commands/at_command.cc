@@ -8,6 +8,13 @@
 namespace rondel::app {
 
 Outcome at_command(const Arguments& arguments, Progress& /*progress*/) {
+  const bool streaming = arguments.has("--points");
+  if (arguments.words.size() != (streaming ? 1U : 3U)) {
+    throw InputError("rondel at", "takes a venue and U_PX V_PX, or --points FILE");
+  }
+  const ImagePoint at =
+      streaming ? ImagePoint{}
+                : ImagePoint{number_word(arguments, 1, "U_PX"), number_word(arguments, 2, "V_PX")};
   const PlaceContext context = place_context(arguments);
   if (const auto source = arguments.value("--points")) {
     stream_points(*source,
@@ -34,10 +41,6 @@ Outcome at_command(const Arguments& arguments, Progress& /*progress*/) {
                   });
     return {};
   }
-  if (arguments.words.size() != 3) {
-    throw InputError("rondel at", "takes a venue and U_PX V_PX, or --points FILE");
-  }
-  const ImagePoint at{number_word(arguments, 1, "U_PX"), number_word(arguments, 2, "V_PX")};
   const auto e = context.curve->floor_with_band(at, context.height_m);
   Outcome outcome;
   outcome.document = {{"u_px", at.u_px},

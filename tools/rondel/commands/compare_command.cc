@@ -30,8 +30,11 @@ Side open_side(const std::string& word) {
   Side side;
   std::error_code error;
   side.results = fs::path(word);
-  if (fs::is_directory(side.results / "results", error)) side.results /= "results";
-  if (!fs::is_directory(side.results, error)) {
+  if (fs::is_directory(side.results / "results", error) ||
+      fs::is_regular_file(side.results / "venue.yaml", error)) {
+    side.results /= "results";
+  }
+  if (!fs::is_directory(fs::path(word), error)) {
     throw InputError(word, "is no venue and no results folder");
   }
   side.curve = range::read_range_curve(side.results / "range.yaml");

@@ -8,34 +8,35 @@
 namespace rondel::app {
 
 Outcome where_command(const Arguments& arguments, Progress& /*progress*/) {
+  const bool streaming = arguments.has("--points");
+  if (arguments.words.size() != (streaming ? 1U : 3U)) {
+    throw InputError("rondel where", "takes a venue and RANGE_M BEARING_DEG, or --points FILE");
+  }
+  const double range_m = streaming ? 1.0 : number_word(arguments, 1, "RANGE_M");
+  const double bearing_deg = streaming ? 0.0 : number_word(arguments, 2, "BEARING_DEG");
+  if (!(range_m > 0.0)) throw InputError("RANGE_M", fmt::format("{} must be above 0", range_m));
   const PlaceContext context = place_context(arguments);
   if (const auto source = arguments.value("--points")) {
     stream_points(*source,
                   "range_m,bearing_deg",
                   "range_m,bearing_deg,u_px,v_px,visible",
-                  [&](double range_m, double bearing_deg, std::string& out) {
+                  [&](double to_m, double at_deg, std::string& out) {
                     const auto pixel = context.curve->pixel_of(
-                        {range_m, wrap_angle(bearing_deg * kRadPerDeg)}, context.height_m);
+                        {to_m, wrap_angle(at_deg * kRadPerDeg)}, context.height_m);
                     if (!pixel) {
-                      fmt::format_to(std::back_inserter(out), "{},{},,,0\n", range_m, bearing_deg);
+                      fmt::format_to(std::back_inserter(out), "{},{},,,0\n", to_m, at_deg);
                       return;
                     }
                     fmt::format_to(std::back_inserter(out),
                                    "{},{},{:.3f},{:.3f},{}\n",
-                                   range_m,
-                                   bearing_deg,
+                                   to_m,
+                                   at_deg,
                                    pixel->u_px,
                                    pixel->v_px,
                                    context.visible(*pixel) ? 1 : 0);
                   });
     return {};
   }
-  if (arguments.words.size() != 3) {
-    throw InputError("rondel where", "takes a venue and RANGE_M BEARING_DEG, or --points FILE");
-  }
-  const double range_m = number_word(arguments, 1, "RANGE_M");
-  const double bearing_deg = number_word(arguments, 2, "BEARING_DEG");
-  if (!(range_m > 0.0)) throw InputError("RANGE_M", fmt::format("{} must be above 0", range_m));
   const auto pixel =
       context.curve->pixel_of({range_m, wrap_angle(bearing_deg * kRadPerDeg)}, context.height_m);
   Outcome outcome;
