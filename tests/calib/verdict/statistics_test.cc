@@ -26,6 +26,30 @@ TEST(Quantiles, AgreeWithPrintedTables) {
   EXPECT_NEAR(fisher_tail(161.447639, 1, 1), 0.05, 1e-8);
 }
 
+// Values of a general library: Boost.Math 1.74 (quantile and complement cdf, double precision),
+// also where no table goes: broken degrees of freedom, far tails.
+TEST(Quantiles, AgreeWithAGeneralLibrary) {
+  const auto near = [](double got, double want) { EXPECT_NEAR(got / want, 1.0, 1e-9) << want; };
+  near(normal_quantile(1e-6), -4.7534243088229);
+  near(normal_quantile(0.2), -0.841621233572914);
+  near(normal_quantile(0.999), 3.09023230616781);
+  near(chi_square_quantile(0.001, 3.0), 0.0242975858156927);
+  near(chi_square_quantile(0.5, 17.0), 16.3381823773925);
+  near(chi_square_quantile(0.975, 250.0), 295.688628178786);
+  near(chi_square_quantile(0.999, 0.5), 8.75288851577337);
+  near(student_quantile(0.6, 2.5), 0.281459512748548);
+  near(student_quantile(0.975, 4.0), 2.77644510519779);
+  near(student_quantile(0.9995, 33.0), 3.61091300765447);
+  near(student_quantile(0.01, 7.0), -2.99795156686853);
+  near(fisher_tail(0.3, 2.0, 38.0), 0.742556573350197);
+  near(fisher_tail(4.5, 1.0, 19.5), 0.0469186228323147);
+  near(fisher_tail(12.0, 2.0, 350.0), 9.10704277058763e-06);
+  near(fisher_tail(60.0, 1.0, 38.0), 2.46425442818229e-09);
+  near(chi_square_tail(0.01, 1.0), 0.920344325445942);
+  near(chi_square_tail(30.0, 12.0), 0.00279242933270092);
+  near(chi_square_tail(90.0, 3.0), 2.19057011928531e-19);
+}
+
 TEST(Quantiles, TailsAreTheirInverse) {
   for (const double degrees : {1.0, 2.0, 7.0, 40.0}) {
     for (const double p : {1e-6, 0.01, 0.3, 0.5, 0.9, 0.999}) {
@@ -38,8 +62,9 @@ TEST(Quantiles, TailsAreTheirInverse) {
   EXPECT_NEAR(chi_square_tail(200.0, 2.0) / std::exp(-100.0), 1.0, 1e-12);
 }
 
-// Newcombe (1998), Statistics in Medicine 17, 857-872, table I, method 3 (score without continuity
-// correction); from memory.
+// The examples of Newcombe (1998), Statistics in Medicine 17, 857-872, method 3 (score without
+// continuity correction). Each follows from the formula (2 n p + z^2 -+ z sqrt(z^2 + 4 n p q)) /
+// (2 (n + z^2)) with z = 1.959964, worked to four digits.
 TEST(Wilson, AgreesWithNewcombesExamples) {
   struct Example {
     int hits, trials;
