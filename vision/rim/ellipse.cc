@@ -92,7 +92,8 @@ Mat5 sandwich(std::span<const ImagePoint> points,
   for (std::size_t i = 0; i < n; ++i) {
     Vec5 j;
     const double r = fit.ellipse.distance_px(points[i], &j);
-    information += fit.weight[i] * j * j.transpose();
+    // The slope of Cauchy's influence, which a weight of 1 / (1 + s^2) means: w (2 w - 1).
+    information += std::max(0.0, fit.weight[i] * (2.0 * fit.weight[i] - 1.0)) * j * j.transpose();
     score[i] = fit.weight[i] * r * j;
     weights += fit.weight[i];
   }

@@ -15,17 +15,24 @@ namespace {
 
 constexpr double kTwoPi = 2.0 * std::numbers::pi;
 
+/// Which edges count: a real rim mostly is darker, or mostly brighter, outwards.
+enum class Kind { falling, rising, any };
+
+bool counts(const RadialEdge& edge, Kind kind) {
+  return kind == Kind::any || (edge.step < 0.0) == (kind == Kind::falling);
+}
+
 /// How well a circle is drawn in the edges.
 struct Support {
   double share = 0.0;     ///< of the rays inside the image, those with an edge on the circle
-  double falling = 0.0;   ///< of those, the ones that get darker outwards
   double in_image = 0.0;  ///< share of the circumference inside the image
   [[nodiscard]] double of_all() const { return share * in_image; }
 };
 
 /// Calls `visit(ray, nearest edge or null)` for each ray that meets the circle inside the image.
 template <class Visit>
-void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Visit visit) {
+void walk(
+    const RadialEdges& edges, const Ellipse& circle, double within_px, Kind kind, Visit visit) {
   const double du = circle.p[0] - edges.from.u_px;
   const double dv = circle.p[1] - edges.from.v_px;
   const double squared = circle.p[2] * circle.p[2];
@@ -34,38 +41,29 @@ void walk(const RadialEdges& edges, const Ellipse& circle, double within_px, Vis
     const double across = dv * edges.cos_azimuth[ray] - du * edges.sin_azimuth[ray];
     const double r = along + std::sqrt(std::max(0.0, squared - across * across));
     if (r > edges.end_px[ray]) continue;
-    const auto& candidates = edges.rays[ray];
-    auto above = std::lower_bound(
-        candidates.begin(), candidates.end(), r, [](const RadialEdge& e, double value) {
-          return e.radius_px < value;
-        });
     const RadialEdge* best = nullptr;
     double distance = within_px;
-    if (above != candidates.end() && above->radius_px - r <= distance) {
-      best = &*above;
-      distance = above->radius_px - r;
-    }
-    if (above != candidates.begin() && r - std::prev(above)->radius_px <= distance) {
-      best = &*std::prev(above);
+    for (const RadialEdge& edge : edges.rays[ray]) {
+      const double d = std::abs(edge.radius_px - r);
+      if (d > distance || !counts(edge, kind)) continue;
+      distance = d;
+      best = &edge;
     }
     visit(ray, best);
   }
 }
 
-Support support_of(const RadialEdges& edges, const Ellipse& circle, double within_px) {
+Support support_of(const RadialEdges& edges, const Ellipse& circle, double within_px, Kind kind) {
   int met = 0;
   int hit = 0;
-  int falling = 0;
-  walk(edges, circle, within_px, [&](std::size_t, const RadialEdge* edge) {
+  walk(edges, circle, within_px, kind, [&](std::size_t, const RadialEdge* edge) {
     ++met;
     if (edge == nullptr) return;
     ++hit;
-    if (edge->step < 0.0) ++falling;
   });
   Support support;
   support.in_image = met / static_cast<double>(edges.rays.size());
   support.share = met > 0 ? hit / static_cast<double>(met) : 0.0;
-  support.falling = hit > 0 ? falling / static_cast<double>(hit) : 0.0;
   return support;
 }
 
@@ -74,10 +72,13 @@ bool holds(const Ellipse& circle, ImagePoint at) {
 }
 
 /// Kasa's least squares circle (1976) through the edges on `circle`.
-std::optional<Ellipse> refitted(const RadialEdges& edges, const Ellipse& circle, double within_px) {
+std::optional<Ellipse> refitted(const RadialEdges& edges,
+                                const Ellipse& circle,
+                                double within_px,
+                                Kind kind) {
   Eigen::Matrix3d normal = Eigen::Matrix3d::Zero();
   Eigen::Vector3d right = Eigen::Vector3d::Zero();
-  walk(edges, circle, within_px, [&](std::size_t ray, const RadialEdge* edge) {
+  walk(edges, circle, within_px, kind, [&](std::size_t ray, const RadialEdge* edge) {
     if (edge == nullptr) return;
     const double u = edge->radius_px * edges.cos_azimuth[ray];
     const double v = edge->radius_px * edges.sin_azimuth[ray];
@@ -95,6 +96,7 @@ std::optional<Ellipse> refitted(const RadialEdges& edges, const Ellipse& circle,
 
 struct Candidate {
   Ellipse circle;
+  Kind kind = Kind::any;
   Support support;
 };
 
@@ -200,35 +202,45 @@ std::vector<Candidate> circles_in(RadialEdges edges,
       voted_circles(edges, size, radius, centre_reach_px, 2.0 * within_px);
   std::vector<Candidate> found;
   constexpr double kLeastShare = 0.3;
+  // Edges of both kinds are met by chance twice as often.
+  constexpr double kMixedWorth = 0.75;
   constexpr std::size_t kMostCircles = 8;
   while (found.size() < kMostCircles && !starts.empty()) {
     Candidate best;
-    for (Ellipse& start : starts) {
-      Ellipse now = start;
-      for (const double slack : {3.0, 2.0, 1.5, 1.0}) {
-        const auto better = refitted(edges, now, slack * within_px);
-        if (!better || !holds(*better, edges.from) || better->p[2] < radius.low_px ||
-            better->p[2] > radius.high_px) {
-          break;
+    for (const Ellipse& start : starts) {
+      for (const Kind kind : {Kind::falling, Kind::rising, Kind::any}) {
+        Ellipse now = start;
+        for (const double slack : {3.0, 2.0, 1.5, 1.0}) {
+          const auto better = refitted(edges, now, slack * within_px, kind);
+          if (!better || !holds(*better, edges.from) || better->p[2] < radius.low_px ||
+              better->p[2] > radius.high_px) {
+            break;
+          }
+          now = *better;
         }
-        now = *better;
+        if (std::hypot(now.p[0] - edges.from.u_px, now.p[1] - edges.from.v_px) > centre_reach_px) {
+          continue;
+        }
+        Support support = support_of(edges, now, within_px, kind);
+        if (kind == Kind::any) support.share *= kMixedWorth;
+        if (support.in_image >= least_in_image && support.share > best.support.share) {
+          best = {now, kind, support};
+        }
       }
-      if (std::hypot(now.p[0] - edges.from.u_px, now.p[1] - edges.from.v_px) > centre_reach_px) {
-        continue;
-      }
-      const Support support = support_of(edges, now, within_px);
-      if (support.in_image < least_in_image || support.share <= best.support.share) continue;
-      best = {now, support};
     }
     if (best.support.share < kLeastShare) break;
     found.push_back(best);
-    walk(edges, best.circle, 1.5 * within_px, [&](std::size_t ray, const RadialEdge* edge) {
-      if (edge == nullptr) return;
-      const double r = edge->radius_px;
-      std::erase_if(edges.rays[ray], [&](const RadialEdge& e) { return e.radius_px == r; });
-    });
+    walk(edges,
+         best.circle,
+         1.5 * within_px,
+         best.kind,
+         [&](std::size_t ray, const RadialEdge* edge) {
+           if (edge == nullptr) return;
+           const double r = edge->radius_px;
+           std::erase_if(edges.rays[ray], [&](const RadialEdge& e) { return e.radius_px == r; });
+         });
     std::erase_if(starts, [&](const Ellipse& start) {
-      return support_of(edges, start, 2.0 * within_px).share < kLeastShare;
+      return support_of(edges, start, 2.0 * within_px, Kind::any).share < kLeastShare;
     });
   }
   return found;
@@ -268,18 +280,19 @@ const Candidate* mirror_edge(const cv::Mat& grey, const std::vector<Candidate>& 
       0.42;  // 40 % of the edge may be hidden, and not all of the rest is seen
   const Candidate* outer = nullptr;
   for (const Candidate& c : circles) {
-    if (c.support.of_all() >= kEnough && (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
+    if (c.support.of_all() >= std::max(kEnough, 0.5 * circles.front().support.of_all()) &&
+        (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
       outer = &c;
     }
   }
-  if (outer == nullptr || outer->support.falling > 0.6) return outer;
+  if (outer == nullptr || outer->kind == Kind::falling) return outer;
   const double r1 = outer->circle.p[2];
   const Candidate* inner = nullptr;
   for (const Candidate& c : circles) {
     const double r2 = c.circle.p[2];
     const double off =
         std::hypot(c.circle.p[0] - outer->circle.p[0], c.circle.p[1] - outer->circle.p[1]);
-    if (r2 > 0.985 * r1 || r2 < 0.7 * r1 || off > 0.06 * r1 || c.support.falling < 0.6 ||
+    if (r2 > 0.985 * r1 || r2 < 0.7 * r1 || off > 0.06 * r1 || c.kind == Kind::rising ||
         c.support.of_all() < 0.8 * kEnough) {
       continue;
     }
@@ -397,12 +410,15 @@ std::optional<Refined> refine(const cv::Mat& grey,
   return Refined{*fit, on_curve / double{kRays}};
 }
 
-/// What edges alone do not show: a scene brighter on one side pulls the blurred edge its way. The
-/// deviation of the centre from it, measured on rendered frames (tests/bench/rim_bench).
+/// What neighbouring points do not show: a scene that keeps to the rim's inside over a wide arc (a
+/// skirting, a wall's foot) pulls the whole arc, and few such arcs make up the scatter. So half the
+/// points' variance counts as if it never averaged, on top of what blur and light alone do. Both
+/// measured on rendered frames (tests/bench/rim_bench).
 constexpr double kSharedErrorPx = 0.03;
+constexpr double kArcShare = 0.5;
 
 ObservedPoint observed(const EllipseFit& fit) {
-  const double extra = kSharedErrorPx * kSharedErrorPx;
+  const double extra = kSharedErrorPx * kSharedErrorPx + kArcShare * fit.noise_px * fit.noise_px;
   return {fit.ellipse.centre(),
           {fit.cov_px2(0, 0) + extra, fit.cov_px2(0, 1), fit.cov_px2(1, 1) + extra}};
 }
@@ -419,7 +435,7 @@ void find_reflection(const cv::Mat& grey, Rim& rim) {
   for (const Candidate& c : circles) {
     const double off =
         std::hypot(c.circle.p[0] - rim.centre.at.u_px, c.circle.p[1] - rim.centre.at.v_px);
-    if (off > 0.1 * r || c.support.share < 0.7 || c.support.falling > 0.2) continue;
+    if (off > 0.1 * r || c.support.share < 0.7 || c.kind != Kind::rising) continue;
     if (best == nullptr || c.support.share > best->support.share) best = &c;
   }
   if (best == nullptr) return;
@@ -454,9 +470,10 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
               (search.radius_px->value + slack) / scale_u};
   }
   constexpr double kWithinPx = 1.3;
-  // Twice: faint arcs come out best when the rays start from their own centre.
+  // Twice where it is faint: such arcs come out best when the rays start from their own centre.
   std::optional<Ellipse> edge;
   double noise = 0.0;
+  bool faint = false;
   double reach = 0.2 * shorter;
   for (ImagePoint from = middle; const double spread_rays : {1.5, 3.0}) {
     const RadialEdges edges = radial_edges(small, from, 240, 10, spread_rays);
@@ -465,9 +482,11 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
     const Candidate* found = mirror_edge(small, circles);
     if (found == nullptr) break;
     edge = found->circle;
+    faint = found->support.of_all() < 0.6;
     noise = edges.noise;
     from = edge->centre();
     reach = 8.0;
+    if (!faint) break;
   }
   if (!edge) return std::nullopt;
 

@@ -1,14 +1,20 @@
 #include <fmt/core.h>
 
+#include <cstdint>
 #include <opencv2/core.hpp>
+#include <span>
+#include <system_error>
 #include <vector>
 
 #include "calib/base/file.h"
+#include "calib/base/mask_rows.h"
 #include "calib/base/problem.h"
+#include "calib/range/curve_file.h"
 #include "calib/venue/centre_file.h"
 #include "tools/rondel/frames.h"
 #include "tools/rondel/results.h"
 #include "tools/rondel/steps/step.h"
+#include "vision/mask/blind_zone.h"
 #include "vision/mask/find_mask.h"
 #include "vision/mask/mask_file.h"
 #include "vision/rim/combine_rims.h"
@@ -38,6 +44,55 @@ cv::Mat open_mask(const CameraSpec& camera, const CentreResult& centre) {
   if (!centre.rim) return mask;
   vision::keep_inside(centre.centre.at, *centre.rim, mask);
   return mask;
+}
+
+/// The floor that the body hides, where a range curve is on file: it may be made after the mask.
+void add_blind_zone(const Workspace& workspace, const cv::Mat& mask, Outcome& outcome) {
+  nlohmann::ordered_json stretches = nlohmann::ordered_json::array();
+  const std::filesystem::path file = result_of(workspace, "range");
+  std::error_code error;
+  if (std::filesystem::exists(file, error)) {
+    const auto curve = range::read_range_curve(file);
+    const vision::BlindZone zone = vision::blind_zone(
+        mask, *curve, workspace.venue.link.bearing_codes, workspace.venue.link.far_m);
+    for (const vision::HiddenStretch& stretch : zone.hidden) {
+      stretches.push_back({{"bearing_deg", stretch.bearing_rad * kDegPerRad},
+                           {"from_m", stretch.from_m},
+                           {"to_m", stretch.to_m}});
+    }
+    outcome.document["unseen_radius_m"] = zone.unseen_radius_m;
+    outcome.document["seen_from_m"] = zone.seen_from_m;
+    outcome.summary += fmt::format(
+        "\nno floor is seen nearer than {:.2f} m; from {:.2f} m on it is seen in every direction "
+        "but behind posts",
+        zone.unseen_radius_m,
+        zone.seen_from_m);
+  } else {
+    outcome.summary += "\nthe blind zone in metres needs the range step";
+  }
+  outcome.document["blind_zone"] = std::move(stretches);
+}
+
+/// What the mask costs on a board, in its two layouts.
+void add_board_size(const Workspace& workspace,
+                    const cv::Mat& mask,
+                    ImagePoint centre,
+                    Outcome& outcome) {
+  const std::span<const std::uint8_t> pixels(mask.ptr<std::uint8_t>(), mask.total());
+  const std::size_t rows = pack_rows(rows_of(pixels, mask.cols)).size();
+  const int sectors = workspace.venue.link.bearing_codes;
+  const VisibleRadii radii = visible_radii(pixels, mask.cols, centre, sectors);
+  const std::size_t radii_bytes = 2 * sizeof(std::uint16_t) * radii.inner_px.size();
+  int lost = 0;
+  for (int v = 0; v < mask.rows; ++v) {
+    for (int u = 0; u < mask.cols; ++u) {
+      lost += mask.at<std::uint8_t>(v, u) != 0 && !shows(radii, u, v) ? 1 : 0;
+    }
+  }
+  outcome.document["board"] = {{"row_bytes", rows},
+                               {"radii_bytes", radii_bytes},
+                               {"radii_lose_pixels", lost},
+                               {"smaller", rows <= radii_bytes ? "rows" : "radii"}};
 }
 
 }  // namespace
@@ -99,7 +154,6 @@ Outcome mask_step(const Workspace& workspace, Progress& progress) {
   outcome.document["strokes"] = workspace.strokes.size();
   outcome.document["noise"] = {{"read_variance", found.noise.read_variance},
                                {"gain", found.noise.gain}};
-  outcome.document["blind_zone"] = nlohmann::ordered_json::array();
   outcome.summary = fmt::format("{:.1f} % of the mirror shows what is around the robot",
                                 100.0 * found.visible_fraction);
   outcome.summary +=
@@ -109,6 +163,8 @@ Outcome mask_step(const Workspace& workspace, Progress& progress) {
   if (!workspace.strokes.empty()) {
     outcome.summary += fmt::format(", with {} strokes by hand", workspace.strokes.size());
   }
+  add_blind_zone(workspace, found.mask, outcome);
+  add_board_size(workspace, found.mask, centre.centre.at, outcome);
   const std::string left_out = vision::left_out_text(loaded);
   if (!left_out.empty()) outcome.summary += "\n" + left_out;
   return outcome;
