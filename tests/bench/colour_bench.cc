@@ -100,7 +100,11 @@ void run(const char* title, double balance, const LightingSpec& spec) {
   mixed.error_blue = balance > 0.5 ? 1.35 : 1.0;
   unseen.push_back(testing::samples_of(mixed_shots, test_scene, mixed, seed++));
 
-  for (std::size_t o = 0; o < testing::hall_objects().size(); ++o) fmt::print("  {} {} px to fit, {} unseen\n", testing::hall_objects()[o], fit[0].objects[o].total(), unseen[0].objects[o].total());
+  for (std::size_t o = 0; o < testing::hall_objects().size(); ++o)
+    fmt::print("  {} {} px to fit, {} unseen\n",
+               testing::hall_objects()[o],
+               fit[0].objects[o].total(),
+               unseen[0].objects[o].total());
   for (const double cap : {1e-4, 1e-3}) {
     ChooseOptions options;
     options.changes = changes_of(spec);

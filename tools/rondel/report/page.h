@@ -11,8 +11,8 @@ namespace rondel::app::report {
 /// command. Returns the path written.
 std::filesystem::path write_report(const Workspace& workspace);
 
-/// The same of a batch that was checked with the venue: its verdict and the check's section only, to
-/// the batch's own results/report.html.
+/// The same of a batch that was checked with the venue: its verdict and the check's section only,
+/// to the batch's own results/report.html.
 std::filesystem::path write_check_report(const Workspace& workspace, const Batch& batch);
 
 }  // namespace rondel::app::report
