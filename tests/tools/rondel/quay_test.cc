@@ -37,7 +37,8 @@ std::vector<std::vector<std::string>> rows_of(const std::string& csv) {
 class Quay : public ::testing::Test {
  protected:
   static void SetUpTestSuite() {
-    folder_ = fs::path(::testing::TempDir()) / "quay_test";
+    // Of this process alone: it is long enough for two of them to meet.
+    folder_ = fs::path(::testing::TempDir()) / ("quay_test-" + std::to_string(::getpid()));
     fs::remove_all(folder_);
     fs::create_directories(folder_);
     fs::copy(kDatasets / "quay", folder_ / "quay", fs::copy_options::recursive);
@@ -45,6 +46,8 @@ class Quay : public ::testing::Test {
     first_ = testing::rondel_in(folder_, {"run", "quay", "--json"});
     truth_ = json::parse(read_file(kDatasets / "quay-truth/truth.json"));
   }
+
+  static void TearDownTestSuite() { fs::remove_all(folder_); }
 
   /// The steps that a run did, by its own account.
   static std::vector<std::string> done_in(const Ran& ran) {

@@ -30,9 +30,9 @@ struct Surveyed {
   std::vector<FrameTruth> truths;
 };
 
-Surveyed surveyed() {
+Surveyed trace_all() {
   Surveyed s;
-  s.scene = practice_scene(SceneRig{}, 11, 3);
+  s.scene = practice_scene(SceneRig{}, 11, 2);
   s.scene.sensor.supersample = 1;
   s.scene.survey = Survey{};
   s.scene.survey->floor_marks = 12;
@@ -41,6 +41,12 @@ Surveyed surveyed() {
     s.truths.push_back(trace_truth(s.scene, f));
   }
   return s;
+}
+
+/// Traced once for all tests.
+const Surveyed& surveyed() {
+  static const Surveyed all = trace_all();
+  return all;
 }
 
 double number(const std::string& text) { return std::stod(text); }
