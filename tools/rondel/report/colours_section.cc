@@ -86,8 +86,9 @@ std::string plane_drawing(const ordered_json& plane,
     }
   }
   svg +=
-      fmt::format("<text class=\"label\" x=\"0\" y=\"{}\">{}</text></svg>",
-                  height + 15.0,
+      fmt::format("<text class=\"label\" font-size=\"{:.0f}\" x=\"0\" y=\"{}\">{}</text></svg>",
+                  hue ? 11.0 : 8.0,  // the planes are drawn equally wide on the page
+                  height + 13.0,
                   hue ? "hue 0 to 179, saturation upwards" : "saturation 0 to 255, value upwards");
   return drawing(svg,
                  fmt::format("{} plane of {} with its boxes",
@@ -110,7 +111,7 @@ std::string envelope_drawing(const ordered_json& map, double wanted, const std::
                                 height + 20.0);
   for (std::size_t row = 0; row < kelvin.size(); ++row) {
     const double y = height - kHigh * static_cast<double>(row + 1);
-    svg += fmt::format("<text class=\"label\" x=\"0\" y=\"{}\">{:.0f} K</text>",
+    svg += fmt::format("<text class=\"label\" font-size=\"11\" x=\"0\" y=\"{}\">{:.0f} K</text>",
                        y + kHigh - 4.0,
                        kelvin[row].get<double>());
     for (std::size_t column = 0; column < stops.size(); ++column) {
@@ -126,7 +127,7 @@ std::string envelope_drawing(const ordered_json& map, double wanted, const std::
     }
   }
   for (std::size_t column = 0; column < stops.size(); column += 2) {
-    svg += fmt::format("<text class=\"label\" x=\"{}\" y=\"{}\">{:+.0f}</text>",
+    svg += fmt::format("<text class=\"label\" font-size=\"11\" x=\"{}\" y=\"{}\">{:+.0f}</text>",
                        kLeft + kWide * static_cast<double>(column),
                        height + 14.0,
                        stops[column].get<double>());

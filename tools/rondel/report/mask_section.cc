@@ -56,8 +56,10 @@ std::string plan_view(const vision::BlindZone& zone, double robot_radius_m, doub
   for (int ring = 1; ring <= 4; ++ring) {
     const double r = 0.25 * ring * around_m;
     svg += fmt::format("<circle class=\"rule\" fill=\"none\" r=\"{:.1f}\"/>", scale * r);
-    svg += fmt::format(
-        "<text class=\"label\" x=\"3\" y=\"{:.1f}\">{:.2f} m</text>", -scale * r + 12.0, r);
+    svg +=
+        fmt::format("<text class=\"label\" font-size=\"11\" x=\"4\" y=\"{:.1f}\">{:.2f} m</text>",
+                    -scale * r + 12.0,
+                    r);
   }
   svg += fmt::format("<circle class=\"limit\" fill=\"none\" r=\"{:.1f}\"/>",
                      scale * zone.unseen_radius_m);

@@ -129,7 +129,10 @@ std::string chart(const nlohmann::ordered_json& config,
 }
 
 std::string table(const std::vector<std::vector<std::string>>& rows, std::string_view caption) {
-  std::string out = "<div class=\"table\" tabindex=\"0\"><table>";
+  // A table of many columns takes the page's whole width.
+  const bool wide = !rows.empty() && rows.front().size() > 6;
+  std::string out =
+      fmt::format("<div class=\"table{}\" tabindex=\"0\"><table>", wide ? " wide" : "");
   if (!caption.empty()) out += fmt::format("<caption>{}</caption>", text(caption));
   // A column is set to the right when every filled cell under its head reads as a number.
   std::vector<bool> right;
