@@ -155,12 +155,12 @@ function showNext() {
     return;
   }
   const next = bench.next;
-  box.replaceChildren(
+  box.replaceChildren(...[
     make('span', { class: 'what' }, make('strong', {}, 'Next: '), next.text),
     next.run ? make('button', { type: 'button', class: 'main', id: 'next-run', onclick: () => run(next.run) }, next.label) : null,
     !next.run && next.station && next.station !== desk.station
       ? make('button', { type: 'button', class: 'main', onclick: () => go(next.station) }, next.label) : null,
-  );
+  ].filter(Boolean));
 }
 
 export function run(step, extra = {}) {

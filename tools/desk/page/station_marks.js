@@ -157,7 +157,7 @@ export const marks = {
     return {
       move(u2, v2) {
         desk.movedMark = { ...mark, u_px: u2, v_px: v2 };
-        preview(marksWith(desk.movedMark));
+        if (desk.bench.has_range) preview(marksWith(desk.movedMark));
         redraw();
       },
       async drop(u2, v2) {
@@ -175,7 +175,7 @@ export const marks = {
     return {
       move(x2, y2) {
         desk.movedFloor = at(x2, y2);
-        preview(marksWith(desk.movedFloor));
+        if (desk.bench.has_range) preview(marksWith(desk.movedFloor));
         redraw();
       },
       async drop(x2, y2) {
