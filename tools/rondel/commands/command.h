@@ -62,6 +62,7 @@ Outcome locate_command(const Arguments& arguments, Progress& progress);
 Outcome compare_command(const Arguments& arguments, Progress& progress);
 Outcome send_command(const Arguments& arguments, Progress& progress);
 Outcome scene_command(const Arguments& arguments, Progress& progress);
+Outcome desk_command(const Arguments& arguments, Progress& progress);
 Outcome completion_command(const Arguments& arguments, Progress& progress);
 
 }  // namespace rondel::app

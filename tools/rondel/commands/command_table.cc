@@ -60,6 +60,12 @@ constexpr std::array kSceneFlags = {
     Flag{"--threads", "COUNT", "Threads to render with; all of the machine's when not given."},
 };
 
+constexpr std::array kDeskFlags = {
+    Flag{"--host", "ADDRESS", "Listen on this address of this machine; without it 127.0.0.1 only."},
+    Flag{"--port", "N", "Listen on this port; without it any free one."},
+    Flag{"--no-open", "", "Print the address only; open no browser."},
+};
+
 constexpr std::span<const Flag> kNoFlags = {};
 
 constexpr std::array kCommands = {
@@ -126,6 +132,11 @@ constexpr std::array kCommands = {
             "Render frames with known truth from a scene description.",
             kSceneFlags,
             scene_command},
+    Command{"desk",
+            "VENUE",
+            "Open the workbench in a browser, served from this machine.",
+            kDeskFlags,
+            desk_command},
     Command{"completion",
             "bash|zsh|fish",
             "Print a completion script for a shell.",
