@@ -1,7 +1,5 @@
 #pragma once
 
-#include <httplib.h>
-
 #include <atomic>
 #include <condition_variable>
 #include <deque>
@@ -9,6 +7,8 @@
 #include <string>
 #include <thread>
 #include <vector>
+
+#include "tools/desk/http.h"
 
 namespace rondel::desk {
 

@@ -1,10 +1,10 @@
 #pragma once
 
-#include <httplib.h>
-
 #include <optional>
 #include <string>
 #include <vector>
+
+#include "tools/desk/http.h"
 
 namespace rondel::desk {
 

@@ -83,9 +83,9 @@ TEST(Ellipse, StatedDeviationIsTheScatter) {
     squares += std::pow(fit->ellipse.p[0], 2) + std::pow(fit->ellipse.p[1], 2);
     stated += fit->cov_px2(0, 0) + fit->cov_px2(1, 1);
   }
-  // A deviation from 60 draws of two coordinates is known to 1 / sqrt(4 * 60) = 6.5 %; four of
-  // them.
-  EXPECT_NEAR(std::sqrt(squares / stated), 1.0, 0.26);
+  // Along the hidden side the centre is known much worse than across it, so that 60 draws count as
+  // 60 values: a deviation is known to 1 / sqrt(2 * 60) = 9 %; four of them.
+  EXPECT_NEAR(std::sqrt(squares / stated), 1.0, 0.37);
 }
 
 TEST(Ellipse, GrossErrorsDoNotMoveIt) {
