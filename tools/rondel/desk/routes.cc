@@ -1,7 +1,6 @@
 #include "tools/rondel/desk/routes.h"
 
 #include <fmt/format.h>
-#include <httplib.h>
 
 #include <algorithm>
 #include <atomic>
@@ -11,6 +10,7 @@
 
 #include "calib/base/problem.h"
 #include "calib/venue/words.h"
+#include "tools/desk/http.h"
 #include "tools/desk/page.h"
 #include "tools/rondel/report/assets/assets.h"
 
