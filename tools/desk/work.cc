@@ -84,6 +84,7 @@ Work::~Work() {
 
 bool Work::start(std::string what, Job job) {
   const std::lock_guard lock(mutex_);
+  if (what.empty()) what = "work";  // an empty name means that nothing is running
   if (!what_.empty()) return false;
   if (thread_.joinable()) thread_.join();
   what_ = what;

@@ -20,7 +20,7 @@ export const tables = {
     const link = tried || { ...bench.link };
     const slider = (key, name, min, max, unit, stepSize) => {
       const shown = make('output', {}, `${link[key]} ${unit}`);
-      const input = make('input', { id: 'link-' + key, type: 'range', min, max, step: stepSize, value: link[key], oninput: (event) => {
+      const input = make('input', { id: 'link-' + key, type: 'range', 'aria-label': name, min, max, step: stepSize, value: link[key], oninput: (event) => {
         tried = { ...link, ...tried, [key]: Number(event.target.value) };
         shown.textContent = `${tried[key]} ${unit}`;
         ask(tried);
