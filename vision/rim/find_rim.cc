@@ -272,37 +272,61 @@ std::optional<double> level_between(const cv::Mat& grey,
   return median(std::move(levels));
 }
 
-/// The mirror's edge among the circles: the largest that is drawn well enough. Where that is the
-/// outer edge of a dark ring around the mirror, the ring's inner edge.
-const Candidate* mirror_edge(const cv::Mat& grey, const std::vector<Candidate>& circles) {
+/// The largest of the circles that is drawn well enough to be a mirror's edge, 40 % of which may be
+/// hidden and not all of the rest seen.
+const Candidate* outermost(const std::vector<Candidate>& circles) {
   if (circles.empty()) return nullptr;
-  constexpr double kEnough =
-      0.42;  // 40 % of the edge may be hidden, and not all of the rest is seen
+  const double enough = std::max(0.31, 0.5 * circles.front().support.of_all());
   const Candidate* outer = nullptr;
   for (const Candidate& c : circles) {
-    if (c.support.of_all() >= std::max(kEnough, 0.5 * circles.front().support.of_all()) &&
-        (outer == nullptr || c.circle.p[2] > outer->circle.p[2])) {
-      outer = &c;
-    }
+    if (c.support.of_all() < enough) continue;
+    if (outer == nullptr || c.circle.p[2] > outer->circle.p[2]) outer = &c;
   }
-  if (outer == nullptr || outer->kind == Kind::falling) return outer;
-  const double r1 = outer->circle.p[2];
-  const Candidate* inner = nullptr;
+  return outer;
+}
+
+/// How far the centres of a mirror's edge and of the ring that holds it may lie apart: both are
+/// round about the mirror's axis, at nearly the same height.
+double apart_px(double outer_px) { return 0.03 * outer_px; }
+
+/// The mirror's edge among `circles` where `outer` is the far side of a dark ring that holds it:
+/// the largest inside about the same centre that gets darker outwards, with little light between.
+std::optional<Candidate> held_in(const cv::Mat& grey,
+                                 const Candidate& outer,
+                                 const std::vector<Candidate>& circles) {
+  constexpr double kEnough = 0.31;
+  const double r1 = outer.circle.p[2];
+  std::optional<Candidate> mirror;
   for (const Candidate& c : circles) {
     const double r2 = c.circle.p[2];
     const double off =
-        std::hypot(c.circle.p[0] - outer->circle.p[0], c.circle.p[1] - outer->circle.p[1]);
-    if (r2 > 0.985 * r1 || r2 < 0.7 * r1 || off > 0.06 * r1 || c.kind == Kind::rising ||
-        c.support.of_all() < 0.8 * kEnough) {
+        std::hypot(c.circle.p[0] - outer.circle.p[0], c.circle.p[1] - outer.circle.p[1]);
+    if (r2 < 0.7 * r1 || r2 > 0.985 * r1 || off > apart_px(r1) || c.kind != Kind::falling ||
+        c.support.of_all() < kEnough) {
       continue;
     }
     const double margin = std::min(2.0, 0.25 * (r1 - r2));
     const auto ring = level_between(grey, c.circle, r2 + margin, r1 - margin - off);
     const auto inside = level_between(grey, c.circle, 0.85 * r2, 0.97 * r2);
     if (!ring || !inside || *ring > 0.7 * *inside) continue;
-    if (inner == nullptr || r2 > inner->circle.p[2]) inner = &c;
+    if (!mirror || r2 > mirror->circle.p[2]) mirror = c;
   }
-  return inner != nullptr ? inner : outer;
+  return mirror;
+}
+
+/// The same, looked for again from the ring's own centre where the first look missed it.
+std::optional<Candidate> held_mirror(const cv::Mat& grey,
+                                     const Candidate& outer,
+                                     const std::vector<Candidate>& circles,
+                                     double within_px) {
+  if (outer.kind == Kind::falling) return std::nullopt;
+  if (const auto mirror = held_in(grey, outer, circles)) return mirror;
+  const double r1 = outer.circle.p[2];
+  const RadialEdges edges = radial_edges(grey, outer.circle.centre(), 240, 10, 2.0);
+  return held_in(
+      grey,
+      outer,
+      circles_in(edges, grey.size(), {0.7 * r1, 0.985 * r1}, apart_px(r1), within_px, 0.5));
 }
 
 cv::Mat grey_of(const cv::Mat& bgr) {
@@ -471,26 +495,25 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
   }
   constexpr double kWithinPx = 1.3;
   // Twice where it is faint: such arcs come out best when the rays start from their own centre.
-  std::optional<Ellipse> edge;
+  std::optional<Candidate> edge;
   double noise = 0.0;
-  bool faint = false;
   double reach = 0.2 * shorter;
   for (ImagePoint from = middle; const double spread_rays : {1.5, 3.0}) {
     const RadialEdges edges = radial_edges(small, from, 240, 10, spread_rays);
     const std::vector<Candidate> circles =
         circles_in(edges, small.size(), radius, reach, kWithinPx, 0.5);
-    const Candidate* found = mirror_edge(small, circles);
+    const Candidate* found = outermost(circles);
     if (found == nullptr) break;
-    edge = found->circle;
-    faint = found->support.of_all() < 0.6;
+    const auto held = held_mirror(small, *found, circles, kWithinPx);
+    edge = held ? *held : *found;
     noise = edges.noise;
-    from = edge->centre();
+    if (found->support.of_all() > 0.6) break;
+    from = found->circle.centre();
     reach = 8.0;
-    if (!faint) break;
   }
   if (!edge) return std::nullopt;
 
-  Ellipse start = *edge;
+  Ellipse start = edge->circle;
   start.p[0] = (start.p[0] + 0.5) * scale_u - 0.5;
   start.p[1] = (start.p[1] + 0.5) * scale_v - 0.5;
   start.p[2] *= scale_u;
@@ -498,7 +521,9 @@ std::optional<Rim> find_rim(const cv::Mat& bgr, const RimSearch& search) {
   cv::Mat smooth;
   cv::GaussianBlur(grey, smooth, {}, 0.7);
   const auto fine = refine(smooth, start, 3.0 * scale, 3.0 * noise / scale);
-  if (!fine) return std::nullopt;
+  // Less than this on the ellipse is a chance find, not a mirror with 40 % of its edge hidden.
+  constexpr double kLeastSeen = 0.36;
+  if (!fine || fine->seen < kLeastSeen) return std::nullopt;
   Rim rim;
   rim.centre = observed(fine->fit);
   rim.ellipse = fine->fit.ellipse.axes();
