@@ -148,10 +148,10 @@ Outcome centre_step(const Workspace& workspace, Progress& progress) {
     if (!combined.agrees[i]) off.push_back(names[i]);
   }
   outcome.document["frames_off"] = off;
-  outcome.summary += fmt::format("\nfrom {} of {} frames, whose centres scatter by {:.2f} px",
-                                 combined.result.frames_used,
-                                 total,
-                                 combined.scatter_px);
+  outcome.summary += fmt::format("\nfrom {} of {} frames", combined.result.frames_used, total);
+  if (combined.result.frames_used > 1) {
+    outcome.summary += fmt::format(", whose centres scatter by {:.2f} px", combined.scatter_px);
+  }
   if (combined.result.frames_disagree) {
     outcome.summary += fmt::format(
         "\nframes disagree by {:.1f} px: the mirror or camera moved during capture; fix it and "
